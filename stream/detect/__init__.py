@@ -1,0 +1,1 @@
+"""Pure detection: pings, carry and streets in; passages, sections, trips and counts out."""

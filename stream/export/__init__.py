@@ -1,0 +1,1 @@
+"""What leaves the store: files with stated columns and units."""

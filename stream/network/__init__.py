@@ -1,0 +1,1 @@
+"""The streets, built once: from an extract to frozen arrays and tables."""

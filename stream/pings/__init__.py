@@ -1,0 +1,1 @@
+"""The archive, read in chunks of typed columns."""

@@ -1,0 +1,1 @@
+"""A page of figures and text, from store views only."""

@@ -1,0 +1,1 @@
+"""The one DuckDB file; all its SQL stands in `sql/`."""

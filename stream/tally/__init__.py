@@ -1,0 +1,1 @@
+"""Counting: exact integer histograms by stratum."""
