@@ -22,6 +22,7 @@ if TYPE_CHECKING:
 
 FORMAT_VERSION = 1
 FIRST_REFERENCE = "limit or class default"
+_Config = dict[str, str | bool | int | float | list[str]]
 _EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
 
 
@@ -102,7 +103,7 @@ class Store:
             raise StoreError(f"{path}: no such store; make it with `turntally network EXTRACT`")
         if not path.parent.is_dir():
             raise StoreError(f"{path}: the folder {path.parent} is missing; make it first")
-        config: dict[str, str | bool | int | float | list[str]] = {}
+        config: _Config = {}
         if memory_mb is not None:
             config["memory_limit"] = f"{memory_mb}MB"
         if threads:
@@ -121,9 +122,7 @@ class Store:
             self._create()
             return
         if "meta" not in tables:
-            raise StoreError(
-                f"{self.path}: is a DuckDB file but no turntally store; name another with --store"
-            )
+            raise StoreError(f"{self.path}: is a DuckDB file, no turntally store; name another with --store")
         found = self.meta().get("format_version")
         if found != str(FORMAT_VERSION):
             raise StoreError(
@@ -206,6 +205,8 @@ class Store:
         """Commit what runs inside, or roll it back on any exception or interrupt and raise that again."""
         if self._in_transaction:
             raise ValueError("a transaction is open already")
+        if self.read_only:
+            raise StoreError(f"{self.path}: was opened for reading; open it for writing")
         self._con.begin()
         self._in_transaction = True
         try:

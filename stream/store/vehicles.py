@@ -103,16 +103,22 @@ def vehicle_names(store_path: Path, settings: Settings, known_key_id: str | None
     """
     if settings.privacy.plain_ids:
         names = VehicleNames(PLAIN, b"")
+    elif known_key_id == PLAIN:
+        raise _mixed(store_path, PLAIN, "keyed hashes")
     else:
         names = _keyed(key_path(store_path, settings), known_key_id)
     if known_key_id is not None and names.key_id != known_key_id:
-        kept = "ids as given" if known_key_id == PLAIN else f"the key {known_key_id}"
-        now = "ids as given" if names.key_id == PLAIN else f"the key {names.key_id}"
-        raise StoreError(
-            f"{store_path}: its vehicles are named with {kept}, this configuration has {now}; "
-            "one vehicle would count as two: put back privacy.plain_ids and privacy.key_file"
-        )
+        raise _mixed(store_path, known_key_id, names.key_id)
     return names
+
+
+def _mixed(store_path: Path, known: str, now: str) -> StoreError:
+    told = {PLAIN: "ids as given", "keyed hashes": "keyed hashes"}
+    return StoreError(
+        f"{store_path}: its vehicles are named with {told.get(known, f'the key {known}')}, this configuration "
+        f"has {told.get(now, f'the key {now}')}; one vehicle would count as two: put back privacy.plain_ids "
+        "and privacy.key_file"
+    )
 
 
 def _keyed(path: Path, known_key_id: str | None) -> VehicleNames:
