@@ -1,1 +1,41 @@
-"""Counting: exact integer histograms by stratum."""
+"""Counting: fixed bins, dimensions, unimpeded times, exact sums."""
+
+from stream.tally.bins import (
+    EDGES_MS,
+    N_BINS,
+    bin_of,
+    lower_ms,
+    mid_ms,
+    quantile_limits_ms,
+    quantile_ms,
+    upper_ms,
+)
+from stream.tally.count import Counts, add_counts, count_passages, count_sections, stratum_number
+from stream.tally.ranks import limit_ranks
+from stream.tally.reference import pace_ms, traversal_ms, unimpeded_ms
+from stream.tally.strata import DIMENSIONS, check_tallies, dimension, needed_columns, with_local_time
+
+__all__ = [
+    "DIMENSIONS",
+    "EDGES_MS",
+    "N_BINS",
+    "Counts",
+    "add_counts",
+    "bin_of",
+    "check_tallies",
+    "count_passages",
+    "count_sections",
+    "dimension",
+    "limit_ranks",
+    "lower_ms",
+    "mid_ms",
+    "needed_columns",
+    "pace_ms",
+    "quantile_limits_ms",
+    "quantile_ms",
+    "stratum_number",
+    "traversal_ms",
+    "unimpeded_ms",
+    "upper_ms",
+    "with_local_time",
+]

@@ -1,0 +1,131 @@
+"""The fixed bins, and quantiles shown by them.
+
+Guarantee: a quantile is one order statistic, that of rank ceil(q n), and lies within max(0.125 s, 1 %) of
+it wherever its bin is closed. The edges come from integer steps alone, so every machine has the same ones.
+
+Source: DESIGN.md section 7, METHODS.md section 9.
+"""
+
+from collections.abc import Sequence
+from fractions import Fraction
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stream.tally.ranks import limit_ranks
+
+I64 = NDArray[np.int64]
+
+CORE_MS = 10_000
+CORE_STEP_MS = 250
+LAST_MS = 3_600_000
+_GROWTH = 50  # a bin beyond the core is at most a 50th, 2 %, of its inner edge
+
+
+def _build_edges_ms() -> I64:
+    outer = [CORE_MS]
+    while outer[-1] < LAST_MS:
+        outer.append(min(outer[-1] + outer[-1] // _GROWTH, LAST_MS))
+    core = list(range(-CORE_MS, CORE_MS, CORE_STEP_MS))
+    edges = np.array([-e for e in reversed(outer[1:])] + core + outer, dtype=np.int64)
+    edges.flags.writeable = False
+    return edges
+
+
+# int64[677]: bin i holds EDGES_MS[i - 1] <= value < EDGES_MS[i]; bin 0 lies below all, the last above all.
+EDGES_MS: I64 = _build_edges_ms()
+N_BINS = len(EDGES_MS) + 1
+
+
+def bin_of(value_ms: NDArray[Any]) -> I64:
+    """Find the bins of values.
+
+    Parameters
+    ----------
+    value_ms
+        int[n], delays in ms or paces in ms per km.
+
+    Returns
+    -------
+    int64[n], in [0, N_BINS)
+    """
+    return np.searchsorted(EDGES_MS, value_ms, side="right").astype(np.int64)
+
+
+def lower_ms(bin_ix: int) -> int | None:
+    """Give the smallest value of a bin; None for the one that is open below."""
+    return None if bin_ix == 0 else int(EDGES_MS[bin_ix - 1])
+
+
+def upper_ms(bin_ix: int) -> int | None:
+    """Give the upper edge of a bin, not part of it; None for the one that is open above."""
+    return None if bin_ix == N_BINS - 1 else int(EDGES_MS[bin_ix])
+
+
+def mid_ms(bin_ix: int) -> float | None:
+    """Give the middle of a bin, exact to half a millisecond; None for the two open ones."""
+    low, high = lower_ms(bin_ix), upper_ms(bin_ix)
+    return None if low is None or high is None else (low + high) / 2
+
+
+def rank_of(n: int, q: Fraction) -> int:
+    """Give the rank ceil(q n), from 1 to n, of the order statistic that stands for a quantile.
+
+    Raises
+    ------
+    ValueError
+        Nothing was counted, or q lies outside (0, 1).
+    """
+    if n < 1 or not 0 < q < 1:
+        raise ValueError(f"no quantile {q} of {n} values; q must lie inside (0, 1) and n be 1 or more")
+    return -(-q.numerator * n // q.denominator)
+
+
+def _bin_at(cumulative: I64, rank: int) -> int:
+    return int(np.searchsorted(cumulative, rank, side="left"))
+
+
+def quantile_ms(counts: I64, q: Fraction) -> float | None:
+    """Give a quantile of a histogram.
+
+    Parameters
+    ----------
+    counts
+        int64[N_BINS], n > 0 in all.
+    q
+        In (0, 1).
+
+    Returns
+    -------
+    float or None
+        Middle of the bin that holds the value of rank ceil(q n); None where that bin is open.
+    """
+    cumulative = np.cumsum(counts)
+    return mid_ms(_bin_at(cumulative, rank_of(int(cumulative[-1]), q)))
+
+
+def quantile_limits_ms(
+    counts: I64, q: Fraction, confidence: Fraction = Fraction(95, 100)
+) -> tuple[int | None, int | None]:
+    """Give distribution-free confidence limits of a quantile.
+
+    Returns
+    -------
+    lower, upper : int or None
+        Lower edge of the bin of the lower order statistic, upper edge of that of the upper one; None
+        where the sample is too small for a limit on that side, or its bin is open.
+
+    Source: METHODS.md section 10.
+    """
+    cumulative = np.cumsum(counts)
+    low, high = limit_ranks(int(cumulative[-1]), q, confidence)
+    return (
+        None if low is None else lower_ms(_bin_at(cumulative, low)),
+        None if high is None else upper_ms(_bin_at(cumulative, high)),
+    )
+
+
+def ladder_ms(counts: I64, levels: Sequence[Fraction]) -> list[tuple[float | None, int | None, int | None]]:
+    """Give quantile, lower and upper limit for each level, as `quantile_ms` and `quantile_limits_ms` do."""
+    return [(quantile_ms(counts, q), *quantile_limits_ms(counts, q)) for q in levels]
