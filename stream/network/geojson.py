@@ -18,7 +18,10 @@ _WGS84 = ("CRS84", "EPSG:4326", "EPSG::4326")
 
 @dataclass(frozen=True)
 class Feature:
-    """One feature; `kind` is the type of its geometry, "null" where it has none."""
+    """One feature; `kind` is the type of its geometry, "null" where it has none.
+
+    An `id` that stands beside the properties is one of them here, unless they have their own.
+    """
 
     where: str
     properties: dict[str, Any]
@@ -65,41 +68,38 @@ def positions(feature: Feature, raw: Any, least: int) -> NDArray[np.float64]:
     feature
         The feature that it belongs to, for messages.
     raw
-        What stands in the file; a height after the two degrees is left aside.
+        What stands in the file, or float64[n, 2]; a height after the two degrees is left aside.
     least
         Smallest number of positions (2 for a line, 4 for a ring).
 
     Raises
     ------
     InputError
-        No list of numbers, too few, not finite, swapped, no degrees, or a step across 180 degrees.
+        No list of numbers, too few, not finite, swapped, or no degrees.
     """
-    if not isinstance(raw, list) or len(raw) < least:
-        n = len(raw) if isinstance(raw, list) else 0
+    if not isinstance(raw, list | np.ndarray) or len(raw) < least:
+        n = len(raw) if isinstance(raw, list | np.ndarray) else 0
         raise InputError(f"{feature.where}: holds {n} positions where {least} are needed; mend or remove it")
-    for number, entry in enumerate(raw, start=1):
-        fault = _fault(entry)
-        if fault:
-            raise InputError(f"{feature.where}, position {number}: {fault}")
-    out = np.array([entry[:2] for entry in raw], dtype=np.float64)
-    steps = np.abs(np.diff(out[:, 0]))
-    if steps.size and steps.max() > 180.0:
-        at = int(np.argmax(steps))
-        raise InputError(
-            f"{feature.where}, position {at + 2}: longitude jumps from {out[at, 0]:g} to {out[at + 1, 0]:g}; "
-            "cut it in two at the 180th meridian (RFC 7946 section 3.1.9)"
-        )
+    if isinstance(raw, list):
+        for number, entry in enumerate(raw, start=1):
+            if not isinstance(entry, list) or len(entry) < 2 or not all(_is_number(v) for v in entry[:2]):
+                raise InputError(
+                    f"{feature.where}, position {number}: {json.dumps(entry)[:60]} is no pair of "
+                    "longitude and latitude; mend it"
+                )
+        raw = [entry[:2] for entry in raw]
+    out = np.array(raw, dtype=np.float64)
+    with np.errstate(invalid="ignore"):
+        bad = ~((np.abs(out[:, 0]) <= 180.0) & (np.abs(out[:, 1]) <= 90.0))
+    if bad.any():
+        at = int(np.argmax(bad))
+        raise InputError(f"{feature.where}, position {at + 1}: {_fault(*out[at].tolist())}")
     return out
 
 
-def _fault(entry: Any) -> str:
-    if not isinstance(entry, list) or len(entry) < 2 or not all(_is_number(v) for v in entry[:2]):
-        return f"{json.dumps(entry)[:60]} is no pair of longitude and latitude; mend it"
-    lon, lat = float(entry[0]), float(entry[1])
+def _fault(lon: float, lat: float) -> str:
     if not (math.isfinite(lon) and math.isfinite(lat)):
         return f"({lon}, {lat}) is not finite; mend it"
-    if abs(lon) <= 180.0 and abs(lat) <= 90.0:
-        return ""
     if abs(lon) <= 90.0 and abs(lat) <= 180.0:
         return (
             f"latitude {lat:g} lies beyond 90 degrees: longitude and latitude look swapped; "
@@ -143,9 +143,10 @@ def _feature(path: Path, number: int, entry: Any) -> Feature:
     geometry = entry.get("geometry")
     shape = geometry if isinstance(geometry, dict) else {}
     properties = entry.get("properties")
+    own = {"id": entry["id"]} if "id" in entry else {}
     return Feature(
         where,
-        properties if isinstance(properties, dict) else {},
+        own | (properties if isinstance(properties, dict) else {}),
         str(shape.get("type", "null")),
         shape.get("coordinates"),
     )

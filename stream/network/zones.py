@@ -153,6 +153,7 @@ def _area(feature: Feature) -> shapely.Geometry:
                     f"{feature.where}: a ring doesn't end where it starts ({lon:g}, {lat:g}); "
                     "repeat the first position at its end (RFC 7946 section 3.1.6)"
                 )
+            _refuse_jump(feature, ring)
         polygons.append(shapely.Polygon(rings[0], rings[1:]))
     area = polygons[0] if feature.kind == "Polygon" else shapely.MultiPolygon(polygons)
     if not shapely.is_valid(area):
@@ -162,6 +163,16 @@ def _area(feature: Feature) -> shapely.Geometry:
         )
     shapely.prepare(area)
     return area
+
+
+def _refuse_jump(feature: Feature, ring: NDArray[np.float64]) -> None:
+    steps = np.abs(np.diff(ring[:, 0]))
+    if steps.max() > 180.0:
+        at = int(np.argmax(steps))
+        raise InputError(
+            f"{feature.where}, position {at + 2}: longitude jumps from {ring[at, 0]:g} to {ring[at + 1, 0]:g}; "
+            "cut the area in two at the 180th meridian (RFC 7946 section 3.1.9)"
+        )
 
 
 def _time_zone(feature: Feature, area: shapely.Geometry, settings: Settings) -> str:

@@ -78,7 +78,7 @@ def test_no_point_gives_no_index(tmp_path: Path) -> None:
 
 
 def test_place_agrees_with_ray_casting(tmp_path: Path) -> None:
-    """Random points in random stars lie where the crossing-number rule puts them (Shimrat 1962, from memory)."""
+    """Random points in a random star lie where the crossing-number rule (from memory) puts them."""
     rng = np.random.default_rng(20240612)
     angle = np.sort(rng.uniform(0, 2 * np.pi, 25))
     reach = rng.uniform(0.2, 1.0, 25)
@@ -134,7 +134,7 @@ BAD = {
     ),
     "across 180": (
         feature({"zone": "z"}, [[[179, 0], [-179, 0], [-179, 1], [179, 1], [179, 0]]]),
-        "position 2: longitude jumps from 179 to -179; cut it in two",
+        "position 2: longitude jumps from 179 to -179; cut the area in two",
     ),
     "point": (feature({"zone": "z"}, [0, 0], "Point"), "holds Point, no Polygon or MultiPolygon; draw"),
     "no name": (feature({"label": "z"}, SQUARE), "feature 1: has neither property `zone` nor `name`; add"),
