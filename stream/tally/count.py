@@ -5,7 +5,6 @@ give equal counts however they were cut into parts.
 """
 
 import hashlib
-import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Self
@@ -83,18 +82,21 @@ def add_counts(parts: Sequence[Counts]) -> Counts:
     return Counts(stratum, histogram.sort(*_KEY, "bin_ix"), moment.sort(_KEY))
 
 
+def _number(text: str) -> int:
+    return int.from_bytes(hashlib.blake2b(text.encode(), digest_size=8).digest(), "big") >> 1
+
+
 def stratum_number(tally: str, values: Mapping[str, str]) -> int:
     """Number a stratum from what it is: 63 bits of the BLAKE2b digest of tally, dimensions and values.
 
-    The order of the dimensions does not count.
+    The order of the dimensions does not count. Parts are set apart by the ASCII record separator,
+    dimension and value by the unit separator.
     """
-    text = json.dumps([tally, sorted(values.items())], ensure_ascii=False, separators=(",", ":"))
-    digest = hashlib.blake2b(text.encode(), digest_size=8).digest()
-    return int.from_bytes(digest, "big") >> 1
+    return _number("\x1e".join([tally, *(f"{d}\x1f{v}" for d, v in sorted(values.items()))]))
 
 
 def _count_tally(rows: pl.DataFrame, name: str, dimensions: Sequence[str]) -> Counts:
-    """Count rows with columns `value_ms`, `bin_ix` and what the dimensions read."""
+    """Count rows with columns `value_ms`, `bin_ix` and what the dimensions read; keys may come twice."""
     named = sorted(dimensions)
     raw = list(dict.fromkeys(DIMENSIONS[d].column for d in named))
     cells = (
@@ -118,14 +120,11 @@ def _count_tally(rows: pl.DataFrame, name: str, dimensions: Sequence[str]) -> Co
     stratum = strata.rename({f"={d}": d for d in named}).unpivot(
         named, index=_KEY, variable_name="dimension", value_name="value"
     )
-    histogram = cells.group_by(*_KEY, "bin_ix").agg(pl.col("n").sum())
-    moment = cells.group_by(_KEY).agg(pl.col("n", "sum", "sum_sq").sum())
-    part = Counts(
+    return Counts(
         stratum.select(pl.col(c).cast(t) for c, t in _STRATUM.items()),
-        histogram.select(pl.col(c).cast(t) for c, t in _HISTOGRAM.items()),
-        moment.select(pl.col(c).cast(t) for c, t in _MOMENT.items()),
+        cells.select(pl.col(c).cast(t) for c, t in _HISTOGRAM.items()),
+        cells.select(pl.col(c).cast(t) for c, t in _MOMENT.items()),
     )
-    return add_counts([part])
 
 
 def _count(rows: pl.DataFrame, value_ms: pl.Series, tallies: Mapping[str, Tally], kind: Kind) -> Counts:
