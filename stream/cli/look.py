@@ -100,14 +100,15 @@ def quantiles(
     ] = None,
 ) -> None:
     """Show mean and P5 to P95 with 95 % limits by stratum."""
-    from stream.export import quantile_rows
-
     session: Session = ctx.obj
     settings = session.settings()
+    only = _conditions(where or [])
     kept = [name.strip() for name in by.split(",") if name.strip()] if by is not None else None
+    from stream.export import quantile_rows
+
     with _open(session) as store:
-        rows = quantile_rows(store, tally, kept, _conditions(where or []), settings)
-    whole = {"store": str(session.store), "tally": tally, "by": kept, "where": where or [], "rows": rows}
+        rows = quantile_rows(store, tally, kept, only, settings)
+    whole = {"store": str(session.store), "tally": tally, "by": kept, "where": only, "rows": rows}
     session.result(whole, str(rows))
 
 
