@@ -30,8 +30,8 @@ PASSAGE_COLUMNS = (
 )
 ARM_COLUMNS = (
     "junction_id, arm, way_id, mouth_node_id, bearing_deg, is_inbound, is_outbound, class, limit_kmh, "
-    "link_m, entry_gate_m, exit_gate_m, entry_lon1, entry_lat1, entry_lon2, entry_lat2, exit_lon1, exit_lat1, "
-    "exit_lon2, exit_lat2"
+    "link_m, entry_gate_m, exit_gate_m, entry_lon1, entry_lat1, entry_lon2, entry_lat2, exit_lon1, "
+    "exit_lat1, exit_lon2, exit_lat2"
 )
 WEST = {
     "type": "FeatureCollection",
