@@ -143,6 +143,16 @@ def _label_days(weekday: pl.Expr, day_types: Mapping[str, Iterable[int]]) -> pl.
     return weekday.replace_strict(by_day, return_dtype=pl.String)
 
 
+def _local(at_us: str, zone: str) -> pl.Expr:
+    moment = pl.from_epoch(pl.col(at_us), time_unit="us").dt.replace_time_zone("UTC")
+    try:
+        return moment.dt.convert_time_zone(zone)
+    except pl.exceptions.ComputeError as err:
+        raise ConfigError(
+            f"time zone {zone!r} is not in the IANA database; mend the zone's time_zone or network.time_zone"
+        ) from err
+
+
 def with_local_time(rows: pl.DataFrame, time: Time, at_us: str) -> pl.DataFrame:
     """Add `hour`, `weekday`, `month` (integers), `day_type` and `time_band` in each row's local time.
 
@@ -160,23 +170,15 @@ def with_local_time(rows: pl.DataFrame, time: Time, at_us: str) -> pl.DataFrame:
     ConfigError
         A time zone that is not in the IANA database.
     """
-    zones = rows["time_zone"].unique().sort().to_list()
-    moment = pl.from_epoch(pl.col(at_us), time_unit="us").dt.replace_time_zone("UTC")
-    parts = {"hour": pl.Int8, "weekday": pl.Int8, "month": pl.Int8}
-    out = rows.with_columns(pl.lit(None, dtype=kind).alias(name) for name, kind in parts.items())
-    for zone in zones:
-        local = moment.dt.convert_time_zone(zone)
+    out = rows.with_columns(pl.lit(None, dtype=pl.Int8).alias(part) for part in ("hour", "weekday", "month"))
+    for zone in rows["time_zone"].unique().sort():
+        local = _local(at_us, zone)
         here = pl.col("time_zone") == zone
         values = {"hour": local.dt.hour(), "weekday": local.dt.weekday(), "month": local.dt.month()}
-        try:
-            out = out.with_columns(
-                pl.when(here).then(v.cast(parts[n])).otherwise(pl.col(n)).alias(n) for n, v in values.items()
-            )
-        except pl.exceptions.ComputeError as err:
-            raise ConfigError(
-                f"time zone {zone!r} is not in the IANA database; "
-                "mend the zone's time_zone or network.time_zone"
-            ) from err
+        out = out.with_columns(
+            pl.when(here).then(value.cast(pl.Int8)).otherwise(pl.col(part)).alias(part)
+            for part, value in values.items()
+        )
     return out.with_columns(
         _label_days(pl.col("weekday"), time.day_types).alias("day_type"),
         _label_hours(pl.col("hour"), time.bands).alias("time_band"),
