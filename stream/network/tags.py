@@ -13,28 +13,9 @@ Tags = Mapping[str, str]
 
 # More specific keys come first and win over those after them.
 VEHICLES = ("motorcar", "motor_vehicle", "vehicle", "access")
-CLOSED = frozenset(
-    (
-        "no",
-        "private",
-        "agricultural",
-        "forestry",
-        "emergency",
-        "military",
-        "bus",
-        "psv",
-        "taxi",
-        "bicycle",
-        "foot",
-        "permit",
-        "residents",
-        "delivery",
-        "hov",
-        "hgv",
-        "use_sidepath",
-        "dismount",
-    )
-)
+_NOT_PUBLIC = ("no", "private", "permit", "residents", "delivery", "military", "emergency")
+_OTHERS_ONLY = ("agricultural", "forestry", "bus", "psv", "taxi", "hov", "hgv", "bicycle", "foot")
+CLOSED = frozenset((*_NOT_PUBLIC, *_OTHERS_ONLY, "use_sidepath", "dismount"))
 LIMITED = frozenset(("destination", "permissive", "customers"))
 OPPOSITE = frozenset(("-1", "reverse"))
 YES = frozenset(("yes", "true", "1"))
