@@ -18,6 +18,8 @@ from stream.errors import StoreError
 from stream.store.files import Statement, names_in, statement, views_in_order
 
 if TYPE_CHECKING:
+    import pyarrow as pa
+
     from stream.network.model import Streets
 
 FORMAT_VERSION = 1
@@ -199,6 +201,30 @@ class Store:
     def rows(self, name: str, params: dict[str, Any] | None = None) -> list[dict[str, Any]]:
         """Run one SQL query and give its rows as dicts."""
         return self.frame(name, params).to_dicts()
+
+    def batches(
+        self,
+        name: str,
+        params: dict[str, Any] | None = None,
+        incoming: pl.DataFrame | None = None,
+        batch_rows: int = 100_000,
+    ) -> Iterator["pa.RecordBatch"]:
+        """Run one SQL query and give its rows as Arrow batches, never all at once; at least one batch.
+
+        Between two batches no other statement may run on this store.
+        """
+        if incoming is not None:
+            with self._registered(incoming):
+                yield from self.batches(name, params, None, batch_rows)
+            return
+        import pyarrow as pa  # 40 ms that a query without an export need not wait
+
+        try:
+            reader = self._con.query(statement(name).text, params=params or {}).to_arrow_reader(batch_rows)
+            yield pa.RecordBatch.from_pylist([], schema=reader.schema)
+            yield from reader
+        except duckdb.OutOfMemoryException as err:
+            raise StoreError(f"{self.path}: DuckDB ran out of memory; raise run.memory_mb") from err
 
     @contextmanager
     def transaction(self) -> Iterator[None]:
