@@ -1,1 +1,1 @@
-"""An invented town with drivers whose delays are known; knows nothing of `detect`."""
+"""An invented town, drivers with known truth, and their pings; knows nothing of detection."""
