@@ -1,7 +1,7 @@
 -- purpose: find keys that stand twice in the tables that carry no index
 -- grain:   one row per table and key at fault; empty means sound
 -- params:  none
--- reads:   passage, section, unfinished, trip, histogram, moment; writes: nothing
+-- reads:   passage, section, unfinished, trip, histogram, moment, carry; writes: nothing
 select 'passage' as table_name, vehicle || ' ' || entry_at::varchar as key, count(*) as n
 from passage
 group by vehicle, entry_at
@@ -34,5 +34,10 @@ select
     count(*) as n
 from moment
 group by batch_id, tally, stratum_id
+having count(*) > 1
+union all
+select 'carry' as table_name, vehicle || ' ' || batch_id::varchar as key, count(*) as n
+from carry
+group by vehicle, batch_id
 having count(*) > 1
 order by table_name, key

@@ -1,8 +1,8 @@
 -- purpose: find rows that refer to a batch, movement, arm, stratum, tally or reference that is not there
 -- grain:   one row per table and missing thing; empty means sound
 -- params:  none
--- reads:   passage, section, unfinished, trip, histogram, moment, batch_count, batch, movement, arm, stratum, tally,
---          reference; writes: nothing
+-- reads:   passage, section, unfinished, trip, histogram, moment, batch_count, carry, batch, movement, arm, stratum,
+--          tally, reference; writes: nothing
 with part as (
     select 'passage' as table_name, batch_id from passage
     union all
@@ -17,6 +17,8 @@ with part as (
     select 'moment' as table_name, batch_id from moment
     union all
     select 'batch_count' as table_name, batch_id from batch_count
+    union all
+    select 'carry' as table_name, batch_id from carry
 )
 select p.table_name, 'batch ' || p.batch_id::varchar as missing, count(*) as n
 from part as p

@@ -36,10 +36,29 @@ class VehicleNames:
     ----------
     key_id : what the store keeps to know the key again; `plain` where ids stay as given
     secret : the key; empty for plain ids
+    unsaved : where a new key must be written before any name made with it is kept; None for a key on file
     """
 
     key_id: str
     secret: bytes
+    unsaved: Path | None = None
+
+    def save(self) -> None:
+        """Write a new key to its file, for its owner only; nothing to do for one on file.
+
+        Raises
+        ------
+        StoreError
+            The file can't be made, or another process made one meanwhile.
+        """
+        if self.unsaved is None or (self.unsaved.exists() and _read(self.unsaved) == self.secret):
+            return
+        try:
+            handle = os.open(self.unsaved, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600)
+            with os.fdopen(handle, "w", encoding="ascii") as out:
+                out.write(self.secret.hex() + "\n")
+        except OSError as err:
+            raise _unusable(self.unsaved, err) from err
 
     def name(self, vehicle_id: str) -> str:
         """Give the name of one vehicle: 16 hexadecimal digits of HMAC-SHA-256, or the id as given."""
@@ -66,12 +85,8 @@ def key_path(store_path: Path, settings: Settings) -> Path:
     return settings.privacy.key_file or store_path.with_name(store_path.name + ".key")
 
 
-def _make(path: Path) -> bytes:
-    secret = secrets.token_bytes(_KEY_BYTES)
-    handle = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600)
-    with os.fdopen(handle, "w", encoding="ascii") as out:
-        out.write(secret.hex() + "\n")
-    return secret
+def _unusable(path: Path, err: OSError) -> StoreError:
+    return StoreError(f"{path}: key file can't be used ({err.strerror}); set privacy.key_file")
 
 
 def _read(path: Path) -> bytes:
@@ -85,7 +100,9 @@ def _read(path: Path) -> bytes:
 
 
 def vehicle_names(store_path: Path, settings: Settings, known_key_id: str | None) -> VehicleNames:
-    """Get the key that the store's names are made with; make it when neither store nor file has one.
+    """Get the key that the store's names are made with; think of one when neither store nor file has it.
+
+    Nothing is written: `VehicleNames.save` does that, before the first batch is committed.
 
     Parameters
     ----------
@@ -113,26 +130,24 @@ def vehicle_names(store_path: Path, settings: Settings, known_key_id: str | None
 
 
 def _mixed(store_path: Path, known: str, now: str) -> StoreError:
-    told = {PLAIN: "ids as given", "keyed hashes": "keyed hashes"}
+    said = {PLAIN: "ids as given", "keyed hashes": "keyed hashes"}
+    kept, has = said.get(known, f"the key {known}"), said.get(now, f"the key {now}")
     return StoreError(
-        f"{store_path}: its vehicles are named with {told.get(known, f'the key {known}')}, this configuration "
-        f"has {told.get(now, f'the key {now}')}; one vehicle would count as two: put back privacy.plain_ids "
-        "and privacy.key_file"
+        f"{store_path}: its vehicles are named with {kept}, this configuration has {has}; "
+        "one vehicle would count as two: put back privacy.plain_ids and privacy.key_file"
     )
 
 
 def _keyed(path: Path, known_key_id: str | None) -> VehicleNames:
     try:
-        if path.exists():
-            secret = _read(path)
-        elif known_key_id is None:
-            secret = _make(path)
-        else:
-            raise StoreError(f"{path}: the key of the store is missing; put it back or set privacy.key_file")
+        is_new = not path.exists()
+        secret = secrets.token_bytes(_KEY_BYTES) if is_new else _read(path)
     except OSError as err:
-        raise StoreError(f"{path}: key file can't be used ({err.strerror}); set privacy.key_file") from err
+        raise _unusable(path, err) from err
+    if is_new and known_key_id is not None:
+        raise StoreError(f"{path}: the key of the store is missing; put it back or set privacy.key_file")
     key_id = hashlib.sha256(b"key id of a store\n" + secret).hexdigest()[:16]
-    return VehicleNames(key_id, secret)
+    return VehicleNames(key_id, secret, path if is_new else None)
 
 
 def name_code(names: Sequence[str]) -> NDArray[np.uint64]:

@@ -74,7 +74,7 @@ def test_folder_in_place_of_a_store_is_refused(tmp_path: Path) -> None:
 
 def test_store_in_a_missing_folder_is_refused(tmp_path: Path) -> None:
     """The folder of a new store must be there."""
-    with pytest.raises(StoreError, match="the folder .*gone is missing; make it first"):
+    with pytest.raises(StoreError, match=r"the folder .*gone is missing; make it first"):
         Store.open(tmp_path / "gone" / "s.duckdb", create=True)
 
 

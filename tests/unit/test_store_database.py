@@ -39,13 +39,19 @@ def test_missing_store_is_refused_with_the_mend(tmp_path: Path) -> None:
     assert list(tmp_path.iterdir()) == []
 
 
+def _write_and_fail(store: Store, error: BaseException) -> None:
+    """Write inside a transaction, then let it end with an error."""
+    with store.transaction():
+        store.put_meta("note", "lost")
+        raise error
+
+
 def test_failed_transaction_leaves_nothing(tmp_path: Path) -> None:
     """What ran before an exception inside a transaction is gone, and the exception comes through."""
     with Store.open(tmp_path / "s.duckdb", create=True) as store:
         before = store.meta()
-        with pytest.raises(KeyError), store.transaction():
-            store.put_meta("note", "lost")
-            raise KeyError
+        with pytest.raises(KeyError):
+            _write_and_fail(store, KeyError())
         assert store.meta() == before
         with store.transaction():
             store.put_meta("note", "kept")
@@ -56,9 +62,8 @@ def test_interrupted_transaction_leaves_nothing(tmp_path: Path) -> None:
     """An interrupt from the keyboard rolls back like any exception."""
     with Store.open(tmp_path / "s.duckdb", create=True) as store:
         before = store.meta()
-        with pytest.raises(KeyboardInterrupt), store.transaction():
-            store.put_meta("note", "lost")
-            raise KeyboardInterrupt
+        with pytest.raises(KeyboardInterrupt):
+            _write_and_fail(store, KeyboardInterrupt())
         assert store.meta() == before
 
 

@@ -8,24 +8,46 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from stream.config import load_settings
+from stream.config import Settings, load_settings
 from stream.errors import StoreError
-from stream.store.vehicles import PLAIN, key_path, name_code, trip_id, vehicle_names
+from stream.store.vehicles import PLAIN, VehicleNames, key_path, name_code, trip_id, vehicle_names
+
+
+def _saved(store: Path, settings: Settings) -> VehicleNames:
+    """Make a key as the first batch does."""
+    names = vehicle_names(store, settings, None)
+    names.save()
+    return names
 
 
 def test_key_is_made_once_for_its_owner_only(tmp_path: Path) -> None:
-    """The first use makes a key that only its owner reads; the second use finds it."""
+    """A new key is written when saved, for its owner only; the second use finds it."""
     store = tmp_path / "town.duckdb"
     first = vehicle_names(store, load_settings(), None)
+    assert list(tmp_path.iterdir()) == []
+    first.save()
+    first.save()
     key = tmp_path / "town.duckdb.key"
     assert stat.S_IMODE(key.stat().st_mode) == 0o600
     assert len(bytes.fromhex(key.read_text())) == 32
-    assert vehicle_names(store, load_settings(), first.key_id) == first
+    again = vehicle_names(store, load_settings(), first.key_id)
+    assert (again.key_id, again.secret, again.unsaved) == (first.key_id, first.secret, None)
+
+
+def test_key_made_meanwhile_is_not_written_over(tmp_path: Path) -> None:
+    """Two processes that both think of a key: the second to write is refused, and the first key stays."""
+    store = tmp_path / "s.duckdb"
+    one, two = vehicle_names(store, load_settings(), None), vehicle_names(store, load_settings(), None)
+    one.save()
+    kept = (tmp_path / "s.duckdb.key").read_text()
+    with pytest.raises(StoreError, match=r"s\.duckdb\.key: key file can't be used \(File exists\)"):
+        two.save()
+    assert (tmp_path / "s.duckdb.key").read_text() == kept
 
 
 def test_name_is_a_keyed_hash(tmp_path: Path) -> None:
     """A name is the first 16 hexadecimal digits of HMAC-SHA-256 under the key (RFC 2104, FIPS 180-4)."""
-    names = vehicle_names(tmp_path / "s.duckdb", load_settings(), None)
+    names = _saved(tmp_path / "s.duckdb", load_settings())
     secret = bytes.fromhex((tmp_path / "s.duckdb.key").read_text())
     wanted = hmac.new(secret, b"bus 7", hashlib.sha256).hexdigest()[:16]
     assert names.names(["bus 7", "bus 7"]) == [wanted, wanted]
@@ -54,7 +76,7 @@ def test_configured_key_file_comes_first(tmp_path: Path) -> None:
     chosen = tmp_path / "chosen.key"
     settings = load_settings(over={"privacy": {"key_file": str(chosen)}})
     assert key_path(tmp_path / "s.duckdb", settings) == chosen
-    vehicle_names(tmp_path / "s.duckdb", settings, None)
+    _saved(tmp_path / "s.duckdb", settings)
     assert [p.name for p in tmp_path.iterdir()] == ["chosen.key"]
 
 
@@ -68,7 +90,7 @@ def test_missing_key_of_a_known_store_is_refused(tmp_path: Path) -> None:
 def test_other_key_is_refused(tmp_path: Path) -> None:
     """A store keeps to the key it was made with, and says which one it wants."""
     store = tmp_path / "s.duckdb"
-    vehicle_names(store, load_settings(), None)
+    _saved(store, load_settings())
     with pytest.raises(StoreError, match="named with the key 0123456789abcdef"):
         vehicle_names(store, load_settings(), "0123456789abcdef")
 

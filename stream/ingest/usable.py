@@ -1,0 +1,117 @@
+"""Whether a delivery as a whole makes sense; if not, what is likely wrong with it and how to mend it.
+
+Guarantee: single bad rows are counted, never refused; what is refused is a delivery of which hardly anything
+could be right.
+"""
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stream.config import Settings
+from stream.errors import InputError
+from stream.store import Store
+from stream.store.batch import BatchTotals
+from stream.store.ledger import Delivery
+
+LATE_SHARE = 0.2
+_SAMPLE_ROWS = 10_000
+Floats = NDArray[np.float64]
+
+
+class Sample:
+    """The first coordinates of a delivery, to tell where its pings lie."""
+
+    def __init__(self) -> None:
+        self._lon: list[Floats] = []
+        self._lat: list[Floats] = []
+        self._n = 0
+
+    def add(self, lon: Floats, lat: Floats) -> None:
+        """Keep what there is still room for."""
+        room = _SAMPLE_ROWS - self._n
+        if room > 0:
+            self._lon.append(lon[:room].copy())
+            self._lat.append(lat[:room].copy())
+            self._n += len(self._lon[-1])
+
+    def where(self) -> tuple[Floats, Floats]:
+        """Give longitudes and latitudes kept."""
+        none = [np.zeros(0)]
+        return np.concatenate(none + self._lon), np.concatenate(none + self._lat)
+
+
+def check_usable(
+    store: Store,
+    settings: Settings,
+    delivery: Delivery,
+    totals: BatchTotals,
+    network: dict[str, Any],
+    sample: Sample,
+) -> None:
+    """Refuse a delivery that lies elsewhere, comes out of order, or gives nothing at all.
+
+    Raises
+    ------
+    InputError
+        With what is wrong, the file, and the mend.
+    """
+    where = ", ".join(str(f) for f in delivery.files[:3]) + (" ..." if len(delivery.files) > 3 else "")
+    if totals.dropped.get("late", 0) > LATE_SHARE * totals.rows_in:
+        raise _out_of_order(store, settings, where, totals)
+    if totals.rows_in and totals.rows_used == 0 and totals.rows_held <= 0:
+        outside = sum(totals.dropped.get(r, 0) for r in ("outside_area", "bad_coordinate", "null_island"))
+        if outside * 2 > totals.rows_in:
+            raise _elsewhere(settings, where, totals, network, sample)
+        raise InputError(
+            f"{where}: none of its {totals.rows_in} rows can be used: {_reasons(totals)}; "
+            "see the rows in question, or mend the keys under source"
+        )
+
+
+def _reasons(totals: BatchTotals) -> str:
+    return ", ".join(f"{reason} {n}" for reason, n in sorted(totals.dropped.items()))
+
+
+def _out_of_order(store: Store, settings: Settings, where: str, totals: BatchTotals) -> InputError:
+    said = f"{where}: {totals.dropped['late']} of {totals.rows_in} rows are older than a row before them"
+    if settings.source.order == "time":
+        mend = "if the file is in no order of time, set source.order to unsorted (it is then sorted first)"
+    elif settings.source.order == "vehicle":
+        mend = "if a vehicle's rows are in no order of time, set source.order to unsorted"
+    else:
+        mend = "name deliveries in the order of their times"
+    times = [row["last_ping_at"] for row in store.rows("ledger/all_batch") if row["last_ping_at"] is not None]
+    if times:
+        mend += f"; pings up to {max(times)} UTC are in already, older days can't follow newer ones"
+    return InputError(f"{said}: {mend}")
+
+
+def _elsewhere(
+    settings: Settings, where: str, totals: BatchTotals, network: dict[str, Any], sample: Sample
+) -> InputError:
+    lon, lat = sample.where()
+    columns = settings.source.columns
+    said = f"{where}: none of its {totals.rows_in} rows lies inside the network ({_reasons(totals)})"
+    if 2 * _n_inside(lat, lon, network) > len(lon):
+        return InputError(
+            f"{said}; with longitude and latitude swapped they would: "
+            f"set source.columns.lon to {columns.lat} and source.columns.lat to {columns.lon}"
+        )
+    box = [round(network[k], 4) for k in ("min_lon", "min_lat", "max_lon", "max_lat")]
+    around = (
+        f"their middle is lon {np.median(lon):.4f}, lat {np.median(lat):.4f}"
+        if len(lon)
+        else "none has a place"
+    )
+    return InputError(
+        f"{said}; {around}, the network spans lon {box[0]} to {box[2]}, lat {box[1]} to {box[3]}: "
+        "name the extract of their region with `turntally network`, or mend source.columns"
+    )
+
+
+def _n_inside(lon: Floats, lat: Floats, network: dict[str, Any]) -> int:
+    inside = (lon >= network["min_lon"]) & (lon <= network["max_lon"])
+    inside &= (lat >= network["min_lat"]) & (lat <= network["max_lat"])
+    return int(inside.sum())

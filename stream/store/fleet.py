@@ -1,0 +1,187 @@
+"""The vehicles of one batch: their stored names, their state, and what they brought from earlier batches.
+
+Guarantee: a vehicle goes on exactly where its last batch left it, with the pings that were held back for it;
+each state's code is that of the batch's vehicle book.
+"""
+
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+import polars as pl
+from numpy.typing import NDArray
+
+from stream.detect.carry import (
+    CARRY_VERSION,
+    STATE,
+    carry_columns,
+    held_rows,
+    new_states,
+    states_from_columns,
+)
+from stream.errors import StoreError
+from stream.pings import HoldBack
+from stream.store.database import Store
+from stream.store.vehicles import VehicleNames, name_code
+
+_PUT_ROWS = 20_000  # vehicles written at once, about 20 MB
+
+
+def _carry_types() -> dict[str, Any]:
+    """Give the type of each column of the carry, from the record's own; lists may all be empty."""
+    out: dict[str, Any] = {name: pl.List(kind) for name, kind in _WAITING.items()}
+    for name in STATE.names or ():
+        plain = pl.Series(np.zeros(0, STATE[name].base)).dtype
+        out[name] = pl.List(plain) if STATE[name].shape else plain
+    return out
+
+
+Pings = tuple[NDArray[np.int32], NDArray[np.int64], NDArray[np.float64], NDArray[np.float64]]
+_NO_PINGS: Pings = (np.zeros(0, np.int32), np.zeros(0, np.int64), np.zeros(0), np.zeros(0))
+_WAITING = {"waiting_us": pl.Int64, "waiting_lon": pl.Float64, "waiting_lat": pl.Float64}
+
+
+class Fleet:
+    """Vehicles seen so far, by the dense code of the batch's vehicle book.
+
+    Attributes
+    ----------
+    names : stored name of each
+    codes : uint64[n], fixed number of each name, for trip numbers
+    states : structured[n], detection's record of each; the pass changes it in place
+    held_before : rows that waited for a decision, or were held back, when their vehicles were loaded
+    """
+
+    def __init__(self, store: Store, namer: VehicleNames, lateness_us: int = 0) -> None:
+        """Start without vehicles; pings are held back until later ones by `lateness_us` have come."""
+        self._store = store
+        self._namer = namer
+        self._known: set[str] = set()
+        self.names: list[str] = []
+        self.codes: NDArray[np.uint64] = np.zeros(0, dtype=np.uint64)
+        self.states: NDArray[Any] = new_states(0)
+        self.held_before = 0
+        self._lateness_us = lateness_us
+        self._waiting: Pings = _NO_PINGS
+
+    def grow(self, vehicle_ids: Sequence[str]) -> None:
+        """Add the ids that are not in yet; `vehicle_ids` begins with those that are.
+
+        Raises
+        ------
+        StoreError
+            Two ids fall on one name, or the carry is of another version.
+        """
+        new = vehicle_ids[len(self.names) :]
+        if new:
+            self._add(self._namer.names(new))
+
+    def add_open(self) -> None:
+        """Add every vehicle of the store that is not in yet and has something open or held."""
+        rest = [row[0] for row in self._store.run("carry/all_open") if row[0] not in self._known]
+        if rest:
+            self._add(rest)
+
+    def _add(self, names: list[str]) -> None:
+        if not self._known.isdisjoint(names):
+            raise StoreError("two vehicle ids fall on one hashed name; name another privacy.key_file")
+        self._known.update(names)
+        states = new_states(len(names))
+        asked = pl.DataFrame({"ix": np.arange(len(names)), "vehicle": names})
+        held = self._store.frame("carry/load_carry", incoming=asked)
+        if held.height:
+            self._check_version(held)
+            loaded = states_from_columns(_columns(held))
+            self.held_before += held_rows(loaded)
+            states[held["ix"].to_numpy()] = loaded
+            self._wait_again(held)
+        self.names += names
+        self.codes = np.concatenate([self.codes, name_code(names)])
+        self.states = np.concatenate([self.states, states])
+
+    def _wait_again(self, held: pl.DataFrame) -> None:
+        """Put the pings that were held back for newly loaded vehicles before all that come."""
+        pings = held.select(pl.col("ix") + len(self.names), *_WAITING).explode(*_WAITING).drop_nulls()
+        self.held_before += pings.height
+        t_us, lon, lat = (pings[name].to_numpy() for name in _WAITING)
+        self._waiting = _joined((pings["ix"].cast(pl.Int32).to_numpy(), t_us, lon, lat), self._waiting)
+
+    @property
+    def held_now(self) -> int:
+        """Count the rows that wait for a decision or are held back."""
+        return held_rows(self.states) + len(self._waiting[0])
+
+    def in_order(self, pings: Pings) -> Pings:
+        """Hold pings back until they are in order, as far as `lateness_us` says.
+
+        Parameters
+        ----------
+        pings
+            vehicle_ix, t_us, lon, lat, as they come.
+
+        Returns
+        -------
+        The pings set free, of these and of those held back before.
+        """
+        if not self._lateness_us:
+            return pings
+        hold = HoldBack(self._lateness_us, self._waiting)
+        free = hold.push(*pings)
+        self._waiting = hold.held()
+        return free
+
+    def let_go(self) -> Pings:
+        """Set all pings free that are held back."""
+        if not self._lateness_us:
+            return _NO_PINGS
+        free = HoldBack(self._lateness_us, self._waiting).flush()
+        self._waiting = _NO_PINGS
+        return free
+
+    def _check_version(self, held: pl.DataFrame) -> None:
+        versions = set(held["carry_version"].to_list())
+        if versions != {CARRY_VERSION}:
+            raise StoreError(
+                f"{self._store.path}: what is open was carried in form {sorted(versions)}, "
+                f"this program reads form {CARRY_VERSION}; "
+                "end it with `turntally ingest --close` of the version that wrote it"
+            )
+
+    def put_carry(self, batch_id: int) -> None:
+        """Write the state of every vehicle as this batch leaves it; the state before it is kept, older go."""
+        self._store.run("carry/clear_superseded")
+        said = {"batch_id": batch_id, "carry_version": CARRY_VERSION}
+        for start in range(0, len(self.names), _PUT_ROWS):
+            rows = slice(start, start + _PUT_ROWS)
+            names = self.names[rows]
+            columns = {"vehicle": names, **carry_columns(self.states[rows]), **self._lists(start, len(names))}
+            self._store.run("carry/put_carry", said, pl.DataFrame(columns, schema_overrides=_carry_types()))
+
+    def _lists(self, start: int, n: int) -> dict[str, Any]:
+        """Give the pings held back, as one list a vehicle, for vehicles start to start + n."""
+        mine = (self._waiting[0] >= start) & (self._waiting[0] < start + n)
+        order = np.argsort(self._waiting[0][mine], kind="stable")
+        ends = np.cumsum(np.bincount(self._waiting[0][mine] - start, minlength=n))[:-1]
+        sorted_columns = (column[mine][order] for column in self._waiting[1:])
+        return {
+            name: [part.tolist() for part in np.split(column, ends)]
+            for name, column in zip(_WAITING, sorted_columns, strict=True)
+        }
+
+
+def _joined(first: Pings, second: Pings) -> Pings:
+    return (
+        np.concatenate([first[0], second[0]]),
+        np.concatenate([first[1], second[1]]),
+        np.concatenate([first[2], second[2]]),
+        np.concatenate([first[3], second[3]]),
+    )
+
+
+def _columns(held: pl.DataFrame) -> dict[str, Any]:
+    out: dict[str, Any] = {}
+    for name in held.columns:
+        if name not in ("ix", "carry_version", *_WAITING):
+            column = held[name]
+            out[name] = column.to_list() if column.dtype == pl.List else column.to_numpy()
+    return out

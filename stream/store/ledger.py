@@ -1,0 +1,131 @@
+"""The ledger: which deliveries are in, and whether another one may join them.
+
+Guarantee: content that is in is never taken in again, and histograms of unlike origin (network,
+configuration, vehicle names) are never added up.
+"""
+
+import json
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from stream.config import Settings
+from stream.errors import StoreError
+from stream.store.database import Store
+
+# Keys of the settings that change no result.
+_FREE = {"source", "privacy", "run"}
+# Parts that shape the network; the others shape what detection and tallies make of it.
+_NETWORK_PARTS = ("network", "gates", "maneuver")
+
+
+@dataclass(frozen=True)
+class Delivery:
+    """One batch to take in.
+
+    Attributes
+    ----------
+    name : what the ledger calls it
+    files : read in this order as one stream
+    digest : of their content; empty for a batch that only closes
+    """
+
+    name: str
+    files: tuple[Path, ...]
+    digest: str
+
+
+def find_known(store: Store, delivery: Delivery) -> dict[str, Any] | None:
+    """Look a delivery up by its content.
+
+    Returns
+    -------
+    dict or None
+        The ledger row of the batch that has this content, under whatever name.
+
+    Raises
+    ------
+    StoreError
+        The name is taken by other content.
+    """
+    wanted = {"content_digest": delivery.digest, "batch_name": delivery.name}
+    rows = store.rows("ledger/find_batch", wanted)
+    for row in rows:
+        if row["content_digest"] == delivery.digest:
+            return row
+    if rows:
+        raise StoreError(
+            f"{store.path}: batch {delivery.name} is in with other content ({rows[0]['rows_in']} rows, "
+            f"digest {rows[0]['content_digest'][:16]}, now {delivery.digest[:16]}); "
+            f"`turntally retract {delivery.name}` first, or give this delivery another name with --batch"
+        )
+    return None
+
+
+def _result_keys(settings: Settings) -> dict[str, Any]:
+    return settings.model_dump(mode="json", exclude=_FREE)
+
+
+def network_config(settings: Settings) -> str:
+    """Give the keys that shape a network as JSON, for `put_network`."""
+    kept = {name: value for name, value in _result_keys(settings).items() if name in _NETWORK_PARTS}
+    return json.dumps(kept, sort_keys=True)
+
+
+def _flat(value: Any, at: str = "") -> dict[str, Any]:
+    if not isinstance(value, dict) or not value:
+        return {at.rstrip("."): value}
+    out: dict[str, Any] = {}
+    for key, inner in value.items():
+        out |= _flat(inner, f"{at}{key}.")
+    return out
+
+
+def differences(old: dict[str, Any], new: dict[str, Any]) -> list[str]:
+    """List the keys whose values differ, as `key: old -> new`; a key that one side lacks shows as `none`."""
+    left, right = _flat(old), _flat(new)
+    keys = sorted(left.keys() | right.keys())
+    return [
+        f"{key}: {left.get(key, 'none')} -> {right.get(key, 'none')}"
+        for key in keys
+        if left.get(key, "none") != right.get(key, "none")
+    ]
+
+
+def check_config(store: Store, settings: Settings) -> None:
+    """Refuse a configuration that would mix unlike histograms.
+
+    Raises
+    ------
+    StoreError
+        A result-changing key differs from the one that the network or the earlier batches were made with;
+        every such key is named.
+    """
+    now = _result_keys(settings)
+    kept = store.meta().get("config")
+    if kept is not None:
+        changed = differences(json.loads(kept), now)
+        if changed:
+            raise StoreError(
+                f"{store.path}: its batches were made with another configuration:\n  "
+                + "\n  ".join(changed)
+                + "\nput these keys back, or ingest into another --store"
+            )
+        return
+    built = store.rows("network/find_network")
+    if built and built[0]["config"]:
+        changed = differences(json.loads(built[0]["config"]), {k: now[k] for k in _NETWORK_PARTS})
+        if changed:
+            raise StoreError(
+                f"{store.path}: its network was built with another configuration:\n  "
+                + "\n  ".join(changed)
+                + "\nrun `turntally network EXTRACT` again, or put these keys back"
+            )
+
+
+def pin_config(store: Store, settings: Settings, key_id: str) -> None:
+    """Write down, within the first batch, what all later ones are held to."""
+    held = store.meta()
+    if "config" not in held:
+        store.put_meta("config", json.dumps(_result_keys(settings), sort_keys=True))
+        store.put_meta("key_id", key_id)
