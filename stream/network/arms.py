@@ -5,6 +5,7 @@ clockwise by bearing from north, so a number means the same as long as the roads
 """
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -33,11 +34,17 @@ class Links:
     node_to: I32
     length_m: F64
 
+    @cached_property
+    def _pairs(self) -> tuple[list[int], list[tuple[int, int]], list[tuple[int, int]]]:
+        roads, turned = self.road.tolist(), self.against.tolist()
+        there = list(zip(roads, turned, strict=True))
+        return self.start.tolist(), there, [(road, 1 - against) for road, against in there]
+
     def run(self, link: int, from_end: bool) -> list[tuple[int, int]]:
         """Give a link's (road, against) pairs in order of travel from its start, or from its end."""
-        span = slice(self.start[link], self.start[link + 1])
-        pairs = list(zip(self.road[span].tolist(), self.against[span].tolist(), strict=True))
-        return [(road, 1 - against) for road, against in reversed(pairs)] if from_end else pairs
+        start, there, back = self._pairs
+        first, last = start[link], start[link + 1]
+        return back[first:last][::-1] if from_end else there[first:last]
 
 
 @dataclass(frozen=True)

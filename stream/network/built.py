@@ -24,7 +24,7 @@ from stream.network.model import F32, I32, NONE, U8, Streets
 from stream.network.movements import build_movements
 from stream.network.osm import ENDINGS, Progress, read_osm
 from stream.network.tables import Parts, arm_table, junction_table, link_table, movement_table, zone_table
-from stream.network.turns import lay_restrictions
+from stream.network.turns import Forbidden, lay_restrictions
 from stream.network.zones import Zones, read_zones
 
 LINE_ENDINGS = (".geojson", ".json", ".parquet", ".geoparquet")
@@ -121,6 +121,7 @@ def assemble(roads: raw.RawRoads, zones: Zones | None, settings: Settings) -> Bu
         "movement": movement_table(parts),
         "zone": zone_table(zones, side),
     }
+    forbidden.report["over_links"] += _over_links(forbidden, road_inside)
     report = {
         **roads.report,
         "restrictions": dict(sorted(forbidden.report.items())),
@@ -153,6 +154,12 @@ def _link_counts(link: pl.DataFrame) -> dict[str, int]:
     dead = link["arm_to_ix"] == NONE
     apart = link["arm_from_ix"] == NONE
     return {"built": len(link), "dead_ends": int((dead & ~apart).sum()), "apart": int(apart.sum())}
+
+
+def _over_links(forbidden: Forbidden, road_inside: I32) -> int:
+    """Count forbidden runs over ways that leave the junction: no movement of one junction holds them."""
+    runs = [run for run in forbidden.always | forbidden.timed if len(run) > 2]
+    return sum(any(road_inside[edge >> 1] == NONE for edge in run[1:-1]) for run in runs)
 
 
 def _road_inside(graph: Graph, junctions: Junctions) -> I32:
@@ -218,15 +225,28 @@ def _streets(
 
 
 def _digest(streets: Streets, tables: dict[str, pl.DataFrame]) -> str:
-    """Hash all arrays and tables: names, types and bytes."""
+    """Hash all arrays and tables: names, types and values."""
     total = hashlib.sha256(json.dumps([BLOB_VERSION, list(streets.class_names)]).encode())
     for name, array in streets.arrays().items():
         total.update(f"{name} {array.dtype.str} {len(array)}\n".encode())
         total.update(np.ascontiguousarray(array).tobytes())
     for name, table in tables.items():
         total.update(f"{name} {len(table)}\n".encode())
-        total.update(table.write_json().encode())
+        for column in table:
+            total.update(f"{column.name} {column.dtype}\n".encode())
+            total.update(_column_bytes(column))
     return total.hexdigest()
+
+
+def _column_bytes(column: pl.Series) -> bytes:
+    """Give a column's values as bytes that don't depend on how the frame library stores them."""
+    if isinstance(column.dtype, pl.List):
+        return column.list.len().to_numpy().tobytes() + column.explode().to_numpy().tobytes()
+    if column.dtype == pl.String:
+        return json.dumps(column.to_list()).encode()
+    if column.dtype == pl.Float64:
+        return column.fill_null(float("nan")).to_numpy().tobytes()
+    return column.to_numpy().tobytes()
 
 
 def streets_to_blobs(streets: Streets) -> dict[str, bytes]:

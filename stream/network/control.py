@@ -76,7 +76,9 @@ def read_controls(
 ) -> list[str]:
     """Name each junction's control: signals, roundabout, stop, give_way, crossing_signals or none."""
     signs = _inside(graph, junctions)
-    for arm in np.flatnonzero(arms.is_inbound).tolist():
+    road_sign = np.bitwise_or.reduceat(graph.point_sign, graph.point_start[:-1])
+    has_sign = np.logical_or.reduceat(road_sign[links.road] > 0, links.start[:-1]) if len(links.road) else []
+    for arm in np.flatnonzero(arms.is_inbound & np.asarray(has_sign, np.bool_)[arms.link]).tolist():
         signs[arms.junction[arm]] |= _up_arm(graph, links, arms, arm, keys.signal_reach_m)
     return [_name(int(sign), kind) for sign, kind in zip(signs, junctions.kind, strict=True)]
 

@@ -102,6 +102,8 @@ class _Inside:
 
 def _go_on(active: Progress, after: int, runs: dict[int, list[Run]]) -> Progress | None:
     """Carry forbidden runs under way on to the next edge; None where one would be driven in full."""
+    if not active and not runs:
+        return ()
     kept = []
     for run, at in active:
         if run[at] == after:

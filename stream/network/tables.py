@@ -14,6 +14,8 @@ from stream.network.model import F64, I32, NONE
 from stream.network.movements import Movements
 from stream.network.zones import Zones, time_zone_at
 
+LIMIT_DIGITS = 3  # decimals of a speed in km/h: limits in miles are kept as 32-bit floats
+
 
 @dataclass(frozen=True)
 class Parts:
@@ -102,7 +104,8 @@ def junction_table(parts: Parts, zones: Zones | None, keys: NetworkKeys) -> pl.D
 def arm_table(parts: Parts, keys: NetworkKeys) -> pl.DataFrame:
     """Make the table of arms."""
     graph, arms, gates = parts.graph, parts.arms, parts.gates
-    in_kmh, out_kmh = arms.in_kmh.astype(np.float64), arms.out_kmh.astype(np.float64)
+    in_kmh = np.round(arms.in_kmh.astype(np.float64), LIMIT_DIGITS)
+    out_kmh = np.round(arms.out_kmh.astype(np.float64), LIMIT_DIGITS)
     columns: dict[str, object] = {
         "arm_ix": np.arange(len(arms.link), dtype=np.int32),
         "junction_ix": arms.junction,
@@ -177,7 +180,7 @@ def link_table(parts: Parts, zones: Zones | None, keys: NetworkKeys) -> pl.DataF
             "arm_to_ix": arms.link_arm_to,
             "length_m": links.length_m,
             "class": pl.Series(classes, dtype=pl.String),
-            "limit_kmh": np.array(limits, np.float64),
+            "limit_kmh": np.round(np.array(limits, np.float64), LIMIT_DIGITS),
             "middle_fwd_m": _between_gates(parts, arms.link_arm_from, arms.link_arm_to) if has_arms else none,
             "middle_back_m": _between_gates(parts, arms.link_arm_to, arms.link_arm_from)
             if has_arms

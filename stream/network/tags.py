@@ -178,7 +178,7 @@ def read_turn(tags: Tags) -> Turn:
     """Judge a relation of type restriction by its tags.
 
     A value in `restriction:motorcar` and its likes wins over the plain `restriction`; a condition
-    (`no_left_turn @ (Mo-Fr 07:00-09:00)`) makes it timed.
+    (`no_left_turn @ (Mo-Fr 07:00-09:00)`, or the older keys `hour_on` and `day_on`) makes it timed.
     """
     exempt = {part.strip() for part in tags.get("except", "").split(";")}
     if exempt & CAR_EXCEPTIONS:
@@ -186,7 +186,8 @@ def read_turn(tags: Tags) -> Turn:
     for key in ("restriction:motorcar", "restriction:motor_vehicle", "restriction:vehicle", "restriction"):
         if key in tags:
             turn = _kind(tags[key].strip())
-            return turn or Turn("unknown_value")
+            has_hours = any(f"{what}_on" in tags for what in ("hour", "day"))
+            return turn._replace(is_timed=has_hours) if turn else Turn("unknown_value")
         timed = tags.get(key + ":conditional")
         if timed is not None:
             turn = _kind(timed.partition("@")[0].strip())
