@@ -77,8 +77,11 @@ def read_controls(
     """Name each junction's control: signals, roundabout, stop, give_way, crossing_signals or none."""
     signs = _inside(graph, junctions)
     road_sign = np.bitwise_or.reduceat(graph.point_sign, graph.point_start[:-1])
-    has_sign = np.logical_or.reduceat(road_sign[links.road] > 0, links.start[:-1]) if len(links.road) else []
-    for arm in np.flatnonzero(arms.is_inbound & np.asarray(has_sign, np.bool_)[arms.link]).tolist():
+    link_sign = np.zeros(len(links.length_m), np.uint8)
+    np.bitwise_or.at(
+        link_sign, np.repeat(np.arange(len(link_sign)), np.diff(links.start)), road_sign[links.road]
+    )
+    for arm in np.flatnonzero(arms.is_inbound & (link_sign[arms.link] > 0)).tolist():
         signs[arms.junction[arm]] |= _up_arm(graph, links, arms, arm, keys.signal_reach_m)
     return [_name(int(sign), kind) for sign, kind in zip(signs, junctions.kind, strict=True)]
 
