@@ -1,0 +1,173 @@
+"""Detection as a function: pings of some vehicles and their records in, passages and the like out.
+
+Guarantee: the same rows, in the same order, for any number of threads; the records hold the rest.
+"""
+
+import itertools
+import os
+from concurrent.futures import ThreadPoolExecutor
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stream.config import Settings
+from stream.detect.clean import place_kernel
+from stream.detect.fused import CLOSE, RESERVE, Work, group_kernel, new_work, pass_kernel
+from stream.detect.parameters import parameters
+from stream.detect.passages import N_PASSAGE, N_SECTION, N_TRIP, N_UNFINISHED, N_USED, Out, new_out
+from stream.detect.records import DROP_REASONS, Found
+from stream.network.model import I32, I64, Streets
+from stream.network.routes import build_index
+
+_Pings = tuple[I32, I64, I32, I32, NDArray[np.int8], I32]
+_ROWS_EACH = 16  # pings per row of output that room is made for at first
+_SHARES = 4  # pieces a thread takes, so that none waits long for another
+
+
+class Detector:
+    """The pass over one network with one set of settings; not to be used by two callers at once.
+
+    Parameters
+    ----------
+    streets
+        The network; not changed.
+    settings
+        Its parts `clean`, `trips`, `follow` and `passages` are used.
+    threads
+        Threads to use; 0 = all cores. The results don't depend on it.
+    """
+
+    def __init__(self, streets: Streets, settings: Settings, threads: int = 0) -> None:
+        follow = settings.follow
+        self._index = build_index(
+            streets, follow.radius_m, follow.turn_cost, follow.reverse_cost, follow.banned_cost
+        )
+        self._parameters = parameters(settings)
+        self._threads = threads or os.cpu_count() or 1
+        self._works: list[Work] = []
+
+    def feed(
+        self,
+        states: NDArray[Any],
+        vehicle_ix: NDArray[np.int32],
+        t_us: NDArray[np.int64],
+        lon: NDArray[np.float64],
+        lat: NDArray[np.float64],
+    ) -> Found:
+        """Take pings; each vehicle's in time order (others count as late), vehicles in any order.
+
+        Parameters
+        ----------
+        states : structured[v] of `carry.STATE`    changed in place
+        vehicle_ix : int32[n]                      row in `states`
+        t_us : int64[n]                            UTC epoch
+        lon, lat : float64[n]                      degrees, WGS 84
+
+        Raises
+        ------
+        ValueError
+            Lengths differ, or a vehicle has no record.
+        """
+        n = len(vehicle_ix)
+        if not n == len(t_us) == len(lon) == len(lat):
+            raise ValueError("columns of unlike length")
+        if n and not 0 <= int(vehicle_ix.min()) <= int(vehicle_ix.max()) < len(states):
+            raise ValueError("a vehicle without a record")
+        if n >= 2**31:
+            raise ValueError("more pings at once than an order can number")
+        vehicle_ix = np.ascontiguousarray(vehicle_ix, np.int32)
+        t_us = np.ascontiguousarray(t_us, np.int64)
+        east, north = np.empty(n, np.int32), np.empty(n, np.int32)
+        reason = np.empty(n, np.int8)
+        degrees = (np.ascontiguousarray(lon, np.float64), np.ascontiguousarray(lat, np.float64))
+        self._shared(
+            lambda a, b: place_kernel(
+                degrees[0][a:b], degrees[1][a:b], self._index, east[a:b], north[a:b], reason[a:b]
+            ),
+            _even(n, self._threads),
+        )
+        counts = np.bincount(vehicle_ix, minlength=len(states))
+        end = np.cumsum(counts)
+        order = np.empty(n, np.int32)
+        group_kernel(vehicle_ix, end - counts, order)
+        ends = np.unique(np.searchsorted(end, _even_ends(n, self._threads * _SHARES)))
+        bounds = np.unique(np.concatenate([[0], end[np.minimum(ends, len(end) - 1)]])) if n else np.array([0])
+
+        parts = [(int(a), int(b)) for a, b in itertools.pairwise(bounds)]
+        return self._gather((vehicle_ix, t_us, east, north, reason, order), states, parts)
+
+    def close(self, states: NDArray[Any]) -> Found:
+        """End what is open: trips, passages, held pings. Pings that come later begin new trips."""
+        n = len(states)
+        nothing = np.zeros(n, np.int32)
+        every = np.arange(n, dtype=np.int32)
+        reason = np.full(n, CLOSE, np.int8)
+        return self._gather(
+            (every, np.zeros(n, np.int64), nothing, nothing, reason, every), states, _even(n, self._threads)
+        )
+
+    def _shared(self, task: Any, parts: list[tuple[int, int]]) -> None:
+        if len(parts) < 2 or self._threads == 1:
+            for a, b in parts:
+                task(a, b)
+            return
+        with ThreadPoolExecutor(self._threads) as pool:
+            list(pool.map(lambda part: task(*part), parts))
+
+    def _gather(self, pings: _Pings, states: NDArray[Any], parts: list[tuple[int, int]]) -> Found:
+        def run(begin: int, stop: int, out: Out, work: Work) -> int:
+            return pass_kernel(*pings, self._index, begin, stop, self._parameters, states, work, out)
+
+        while len(self._works) < min(self._threads, max(len(parts), 1)):
+            self._works.append(new_work())
+        free = list(self._works)
+        done: list[Any] = [None] * len(parts)
+
+        def task(i: int) -> None:
+            work = free.pop()
+            try:
+                done[i] = _fill(run, *parts[i], work)
+            finally:
+                free.append(work)
+
+        if len(parts) < 2 or self._threads == 1:
+            for i in range(len(parts)):
+                task(i)
+        else:
+            with ThreadPoolExecutor(self._threads) as pool:
+                list(pool.map(task, range(len(parts))))
+        return _join([out for outs in done for out in outs])
+
+
+def _even_ends(n: int, parts: int) -> NDArray[np.int64]:
+    return (np.arange(1, parts + 1) * n) // parts
+
+
+def _even(n: int, parts: int) -> list[tuple[int, int]]:
+    ends = np.unique(np.concatenate([[0], _even_ends(n, parts)])).tolist()
+    return list(itertools.pairwise(ends))
+
+
+def _fill(run: Any, begin: int, stop: int, work: Work) -> list[Out]:
+    """Run one part to its end, with as many outputs as it takes."""
+    outs: list[Out] = []
+    at = begin
+    while at < stop or not outs:
+        out = new_out(RESERVE + 64 + (stop - at) // _ROWS_EACH, len(DROP_REASONS))
+        at = run(at, stop, out, work)
+        outs.append(out)
+    return outs
+
+
+def _join(outs: list[Out]) -> Found:
+    """Put the outputs of all parts after one another; each part is a range of vehicles, in their order."""
+    parts = [new_out(0, len(DROP_REASONS)), *outs]
+    return Found(
+        np.concatenate([p.passage[: p.n[N_PASSAGE]] for p in parts]),
+        np.concatenate([p.section[: p.n[N_SECTION]] for p in parts]),
+        np.concatenate([p.unfinished[: p.n[N_UNFINISHED]] for p in parts]),
+        np.concatenate([p.trip[: p.n[N_TRIP]] for p in parts]),
+        np.add.reduce([p.dropped for p in parts]).astype(np.int64),
+        sum(int(p.n[N_USED]) for p in parts),
+    )

@@ -1,0 +1,118 @@
+"""When a gate was passed: time within the step between two known places.
+
+Short steps: a cubic in the neighbouring speeds that never runs backward. Long steps: drive time at the
+likely speed, the slack where the vehicle most likely stood (DESIGN.md section 5, Gates).
+
+Source of the monotone limits: Fritsch & Carlson 1980, Monotone piecewise cubic interpolation (from memory).
+"""
+
+import math
+
+from stream.detect.step import Step
+from stream.kernel import kernel
+from stream.network.routes import StreetIndex
+
+LONG_S = 6.5  # longer steps are not smooth motion
+STAND_MPS = 2.0  # slower at a step's end: it may have stood there
+NOISE_M = 2.5  # m, of one place against the next, for the error estimate
+
+
+@kernel
+def cubic_share(share_m: float, slope: float, v0: float, v1: float) -> float:
+    """Give the share of a step's time at which a share of its metres is reached.
+
+    Parameters
+    ----------
+    share_m : float      in [0, 1]
+    slope : float        mean speed of the step, > 0
+    v0, v1 : float       speeds at its ends, >= 0
+    """
+    a = min(v0 / slope, 3.0)
+    b = min(v1 / slope, 3.0)
+    square = a * a + b * b
+    if square > 9.0:
+        shrink = 3.0 / math.sqrt(square)
+        a *= shrink
+        b *= shrink
+    low = 0.0
+    high = 1.0
+    for _ in range(30):
+        u = 0.5 * (low + high)
+        p = u * (a + u * (3.0 - 2.0 * a - b + u * (a + b - 2.0)))
+        if p < share_m:
+            low = u
+        else:
+            high = u
+    return 0.5 * (low + high)
+
+
+@kernel
+def drive_s(index: StreetIndex, step: Step, n: int, from_m: float, to_m: float, share: float) -> float:
+    """Give the time to drive a stretch of a step at a share of the cruise speeds, s."""
+    out = 0.0
+    for i in range(n):
+        low = max(step.start_m[i], from_m)
+        high = min(step.start_m[i] + step.to_m[i] - step.from_m[i], to_m)
+        if high > low:
+            out += (high - low) / (index.edge[step.edge[i]].speed * share)
+    return out
+
+
+@kernel
+def stop_place(index: StreetIndex, step: Step, n: int, from_m: float, to_m: float) -> float:
+    """Give the first mouth that a stretch of a step comes to, m along the step; -1 none."""
+    for i in range(n - 1):
+        end = step.start_m[i] + step.to_m[i] - step.from_m[i]
+        if from_m <= end <= to_m:
+            e = index.edge[step.edge[i]]
+            if not e.is_inside and e.to_mouth == 0.0:
+                return end
+    return -1.0
+
+
+@kernel
+def long_share(
+    index: StreetIndex,
+    step: Step,
+    n: int,
+    from_m: float,
+    to_m: float,
+    gate_m: float,
+    dt_s: float,
+    v0: float,
+    v1: float,
+    share: float,
+) -> float:
+    """Give the share of a long step's time at which a gate is reached.
+
+    Parameters
+    ----------
+    from_m, to_m, gate_m : float    metres along the step
+    dt_s : float                    its duration
+    v0, v1 : float                  speeds before and after, m/s; -1 unknown
+    """
+    whole = drive_s(index, step, n, from_m, to_m, share)
+    part = drive_s(index, step, n, from_m, gate_m, share)
+    slack = dt_s - whole
+    if slack <= 0.0 or whole <= 0.0:
+        return part / whole if whole > 0.0 else 0.5
+    stop = stop_place(index, step, n, from_m, to_m)
+    if 0.0 <= v0 < STAND_MPS and v0 <= v1:
+        stop = from_m
+    elif 0.0 <= v1 < STAND_MPS:
+        stop = to_m
+    if stop < 0.0:
+        return part / whole
+    if gate_m > stop:
+        part += slack
+    return part / dt_s
+
+
+@kernel
+def gate_error_s(dt_s: float, speed_mps: float, drive_time_s: float) -> float:
+    """Estimate the standard error of a gate's time: noise over speed, and slack that may lie elsewhere, s."""
+    noise = NOISE_M / max(speed_mps, 0.5)
+    slack = 0.0
+    if dt_s > 1.5:
+        slack = 0.04 * dt_s + 0.29 * max(0.0, dt_s - drive_time_s) * (1.0 if dt_s > LONG_S else 0.3)
+    return math.sqrt(noise * noise + slack * slack)
