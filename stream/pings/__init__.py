@@ -1,1 +1,9 @@
 """The archive, read in chunks of typed columns."""
+
+from stream.pings.book import VehicleBook
+from stream.pings.chunk import PingChunk
+from stream.pings.files import content_digest, expand
+from stream.pings.hold import HoldBack
+from stream.pings.read import PingSource, open_source
+
+__all__ = ["HoldBack", "PingChunk", "PingSource", "VehicleBook", "content_digest", "expand", "open_source"]
