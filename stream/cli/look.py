@@ -35,7 +35,7 @@ def _status_told(whole: dict[str, Any]) -> str:
     if net is None:
         return lines[0] + "\nnetwork: none; run `turntally network EXTRACT`"
     lines.append(
-        f"network: {net['network_digest']}, {net['n_junctions']:,} junctions, {net['n_arms']:,} arms, "
+        f"network: {net['network_digest'][:12]}, {net['n_junctions']:,} junctions, {net['n_arms']:,} arms, "
         f"{net['n_links']:,} links, {net['n_movements']:,} movements"
     )
     lines.append(

@@ -1,7 +1,7 @@
 """The command that builds the streets."""
 
 from pathlib import Path
-from typing import Annotated, Any
+from typing import Annotated
 
 import typer
 
@@ -33,26 +33,20 @@ def network(
 
     session: Session = ctx.obj
     settings = session.settings()
+    run = settings.run
+    if session.store.exists():  # told now if it can't be written, not after a long build
+        Store.open(session.store).close()
     with Bars(session) as bars:
-        built = build_network(extract, zones, settings, bars.show)
-    with Store.open(session.store, create=True, memory_mb=settings.run.memory_mb) as store:
+        built = build_network(extract, zones, settings, lambda what, n: bars.show(what, n, 0, f"{n:,}"))
+    with Store.open(session.store, create=True, memory_mb=run.memory_mb, threads=run.threads) as store:
         put_network(store, built, network_config(settings))
-    whole = {
-        "extract": str(extract),
-        "store": str(session.store),
-        "network_digest": built.digest,
-        **built.report,
-    }
-    session.result(whole, _told(whole))
+    head = {"extract": str(extract), "store": str(session.store), "network_digest": built.digest}
+    session.result({**head, "counts": built.report}, _told(head, built.report))
 
 
-def _told(whole: dict[str, Any]) -> str:
-    lines = [f"network {whole['network_digest']} from {whole['extract']} is in {whole['store']}"]
-    for key, value in whole.items():
-        if isinstance(value, dict):
-            lines.append(f"  {key.replace('_', ' ')}: {counts(value)}")
-        elif key not in ("extract", "store", "network_digest"):
-            lines.append(
-                f"  {key.replace('_', ' ')}: {value:,}" if isinstance(value, int) else f"  {key}: {value}"
-            )
+def _told(head: dict[str, str], report: dict[str, dict[str, int]]) -> str:
+    width = max(map(len, report))
+    lines = [f"network {head['network_digest'][:12]} of {head['extract']} is in {head['store']}"]
+    for part, numbers in report.items():
+        lines.append(f"  {part.replace('_', ' '):{width}}  {counts(numbers, is_sorted=False)}")
     return "\n".join(lines)

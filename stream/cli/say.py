@@ -111,7 +111,17 @@ def table(heads: Sequence[str], rows: Sequence[Sequence[str]], left: int = 1) ->
     return "\n".join(out)
 
 
-def counts(numbers: dict[str, int]) -> str:
-    """Write counts by reason in one line, the greatest first; `none` where there are none."""
-    kept = sorted(((n, reason) for reason, n in numbers.items() if n), key=lambda p: (-p[0], p[1]))
-    return ", ".join(f"{reason} {n:,}" for n, reason in kept) or "none"
+def counts(numbers: dict[str, int], *, is_sorted: bool = True) -> str:
+    """Write counts by reason in one line without zeros; `none` where nothing is left.
+
+    Parameters
+    ----------
+    numbers
+        Reason to count.
+    is_sorted
+        The greatest first; else in the order given.
+    """
+    kept = [(reason.replace("_", " "), n) for reason, n in numbers.items() if n]
+    if is_sorted:
+        kept.sort(key=lambda pair: (-pair[1], pair[0]))
+    return ", ".join(f"{n:,} {reason}" for reason, n in kept) or "none"

@@ -65,8 +65,11 @@ def test_network_tells_what_it_built_and_left_out(town_osm: Path, tmp_path: Path
     """Text and JSON name the 12 junctions of the plan and the ways that are no roads."""
     whole = done_json("network", town_osm, cwd=tmp_path)
     said = done("network", town_osm, cwd=tmp_path)
-    assert "12" in said
-    assert whole["network_digest"] in said
+    assert whole["counts"]["junctions"]["built"] == 12
+    assert whole["counts"]["ways_left_out"] == {"class": 2}  # a service road and a footway
+    assert whole["network_digest"][:12] in said
+    for part, words in (("ways left out", "2 class"), ("junctions", "12 built")):
+        assert any(line.split("  ")[1] == part and words in line for line in said.splitlines())
     assert done_json("status", cwd=tmp_path)["network"]["n_junctions"] == 12
 
 

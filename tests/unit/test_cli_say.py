@@ -29,7 +29,14 @@ def test_table_refuses_a_row_of_other_length() -> None:
 
 def test_counts_greatest_first() -> None:
     """Counts stand by size, then by name, and zeros are left out."""
-    assert counts({"late": 3, "gap": 1200, "dwell": 3, "close": 0}) == "gap 1,200, dwell 3, late 3"
+    assert (
+        counts({"late": 3, "null_island": 1200, "gap": 3, "close": 0}) == "1,200 null island, 3 gap, 3 late"
+    )
+
+
+def test_counts_in_the_order_given() -> None:
+    """Where the order says something, it stays."""
+    assert counts({"built": 2, "left_out": 7}, is_sorted=False) == "2 built, 7 left out"
 
 
 def test_counts_without_any() -> None:
