@@ -43,7 +43,23 @@ class Zones:
         ----------
         lon, lat
             float64[n], degrees.
+
+        Raises
+        ------
+        InputError
+            No point lies in a zone, but some would with the zones' longitude and latitude swapped.
         """
+        placed = self._first(lon, lat)
+        if placed.size and (placed == NO_ZONE).all():
+            n = int((self._first(lat, lon) != NO_ZONE).sum())
+            if n:
+                raise InputError(
+                    f"{self.path}: none of {placed.size} places in the network lies in a zone, but {n} "
+                    "would with longitude and latitude swapped; write longitude first (RFC 7946, 3.1.1)"
+                )
+        return placed
+
+    def _first(self, lon: NDArray[np.float64], lat: NDArray[np.float64]) -> NDArray[np.int32]:
         degrees = np.column_stack([np.asarray(lon, np.float64), np.asarray(lat, np.float64)])
         points = np.asarray(shapely.points(degrees), dtype=np.object_)
         point_ix, zone_ix = shapely.STRtree(self.areas).query(points, predicate="intersects")
@@ -51,23 +67,6 @@ class Zones:
         np.minimum.at(first, point_ix, zone_ix.astype(np.int32))
         first[first == len(self.names)] = NO_ZONE
         return first
-
-    def refuse_swapped(self, lon: NDArray[np.float64], lat: NDArray[np.float64]) -> None:
-        """Raise if no point lies in a zone as written, but some do with the zones' two degrees swapped.
-
-        Raises
-        ------
-        InputError
-            The file most likely writes latitude first.
-        """
-        lon, lat = np.asarray(lon, np.float64), np.asarray(lat, np.float64)
-        if lon.size and (self.place(lon, lat) == NO_ZONE).all():
-            n = int((self.place(lat, lon) != NO_ZONE).sum())
-            if n:
-                raise InputError(
-                    f"{self.path}: no junction lies in a zone, but {n} of {lon.size} would with longitude "
-                    "and latitude swapped; GeoJSON writes longitude first (RFC 7946 section 3.1.1)"
-                )
 
 
 def read_zones(path: Path, settings: Settings) -> Zones:
@@ -170,8 +169,8 @@ def _refuse_jump(feature: Feature, ring: NDArray[np.float64]) -> None:
     if steps.max() > 180.0:
         at = int(np.argmax(steps))
         raise InputError(
-            f"{feature.where}, position {at + 2}: longitude jumps from {ring[at, 0]:g} to {ring[at + 1, 0]:g}; "
-            "cut the area in two at the 180th meridian (RFC 7946 section 3.1.9)"
+            f"{feature.where}, position {at + 2}: longitude jumps from {ring[at, 0]:g} to "
+            f"{ring[at + 1, 0]:g}; cut the area in two at the 180th meridian (RFC 7946 section 3.1.9)"
         )
 
 

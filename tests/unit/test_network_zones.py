@@ -236,10 +236,12 @@ def test_swapped_degrees_that_are_legal_are_found_by_the_junctions(tmp_path: Pat
     path = written(tmp_path, feature({"zone": "z"}, [ring(60, 24.5)]))
     zones = read_zones(path, SETTINGS)
     lon, lat = np.array([24.94, 24.95, 29.0]), np.array([60.17, 60.18, 65.0])
-    with pytest.raises(InputError, match=r"zones\.geojson.*2 of 3 would with longitude and latitude swapped"):
-        zones.refuse_swapped(lon, lat)
-    zones.refuse_swapped(lat, lon)
-    zones.refuse_swapped(np.array([100.0]), np.array([10.0]))
+    with pytest.raises(
+        InputError, match=r"zones\.geojson.*none of 3 places .* but 2 would with longitude and lat.*swapped"
+    ):
+        zones.place(lon, lat)
+    assert zones.place(lat, lon).tolist() == [0, 0, -1]
+    assert zones.place(np.array([100.0]), np.array([10.0])).tolist() == [-1]
 
 
 def test_time_zone_at_the_places_of_the_iana_table() -> None:
