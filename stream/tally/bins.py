@@ -6,14 +6,13 @@ it wherever its bin is closed. The edges come from integer steps alone, so every
 Source: DESIGN.md section 7, METHODS.md section 9.
 """
 
-from collections.abc import Sequence
 from fractions import Fraction
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from stream.tally.ranks import limit_ranks
+from stream.tally.ranks import CONFIDENCE, limit_ranks
 
 I64 = NDArray[np.int64]
 
@@ -82,17 +81,17 @@ def rank_of(n: int, q: Fraction) -> int:
     return -(-q.numerator * n // q.denominator)
 
 
-def _bin_at(cumulative: I64, rank: int) -> int:
-    return int(np.searchsorted(cumulative, rank, side="left"))
+def _bin_at(bin_ix: I64, cumulative: I64, rank: int) -> int:
+    return int(bin_ix[np.searchsorted(cumulative, rank, side="left")])
 
 
-def quantile_ms(counts: I64, q: Fraction) -> float | None:
+def quantile_ms(bin_ix: I64, counts: I64, q: Fraction) -> float | None:
     """Give a quantile of a histogram.
 
     Parameters
     ----------
-    counts
-        int64[N_BINS], n > 0 in all.
+    bin_ix, counts
+        int[k], bins that are not empty, ascending, and what they hold.
     q
         In (0, 1).
 
@@ -102,13 +101,20 @@ def quantile_ms(counts: I64, q: Fraction) -> float | None:
         Middle of the bin that holds the value of rank ceil(q n); None where that bin is open.
     """
     cumulative = np.cumsum(counts)
-    return mid_ms(_bin_at(cumulative, rank_of(int(cumulative[-1]), q)))
+    return mid_ms(_bin_at(bin_ix, cumulative, rank_of(int(cumulative[-1]), q)))
 
 
 def quantile_limits_ms(
-    counts: I64, q: Fraction, confidence: Fraction = Fraction(95, 100)
+    bin_ix: I64, counts: I64, q: Fraction, confidence: Fraction = CONFIDENCE
 ) -> tuple[int | None, int | None]:
     """Give distribution-free confidence limits of a quantile.
+
+    Parameters
+    ----------
+    bin_ix, counts
+        As for `quantile_ms`.
+    q, confidence
+        In (0, 1).
 
     Returns
     -------
@@ -121,11 +127,6 @@ def quantile_limits_ms(
     cumulative = np.cumsum(counts)
     low, high = limit_ranks(int(cumulative[-1]), q, confidence)
     return (
-        None if low is None else lower_ms(_bin_at(cumulative, low)),
-        None if high is None else upper_ms(_bin_at(cumulative, high)),
+        None if low is None else lower_ms(_bin_at(bin_ix, cumulative, low)),
+        None if high is None else upper_ms(_bin_at(bin_ix, cumulative, high)),
     )
-
-
-def ladder_ms(counts: I64, levels: Sequence[Fraction]) -> list[tuple[float | None, int | None, int | None]]:
-    """Give quantile, lower and upper limit for each level, as `quantile_ms` and `quantile_limits_ms` do."""
-    return [(quantile_ms(counts, q), *quantile_limits_ms(counts, q)) for q in levels]

@@ -12,6 +12,7 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
+CONFIDENCE = Fraction(95, 100)
 _REACH = 14.0  # standard deviations; what lies beyond holds less than 1e-40
 
 
@@ -34,9 +35,7 @@ def _window(n: int, q: Fraction) -> tuple[int, NDArray[np.float64]]:
 
 
 @lru_cache(maxsize=16_384)
-def limit_ranks(
-    n: int, q: Fraction, confidence: Fraction = Fraction(95, 100)
-) -> tuple[int | None, int | None]:
+def limit_ranks(n: int, q: Fraction, confidence: Fraction = CONFIDENCE) -> tuple[int | None, int | None]:
     """Give the ranks whose order statistics hold the quantile q between them.
 
     Parameters
