@@ -189,6 +189,10 @@ def banned_turns(streets: PlainStreets) -> tuple[set[tuple[int, int, int]], int]
         value = tags.get("restriction", "")
         if {"motorcar", "motor_vehicle", "vehicle"} & set(tags.get("except", "").split(";")):
             continue
+        if {"day_on", "day_off", "hour_on", "hour_off"} & set(
+            tags
+        ):  # holds at times: the older keys for that
+            continue
         via = [ref for kind, ref, role in members if role == "via" and kind == "n"]
         ways = {
             role: [ref for kind, ref, r in members if r == role and kind == "w"] for role in ("from", "to")
