@@ -110,6 +110,7 @@ def _read_ways(path: Path, classes: tuple[str, ...], tell: Progress) -> _Ways:
     kinds = osmium.osm.WAY | osmium.osm.RELATION
     reader = osmium.FileProcessor(str(path), kinds).with_filter(osmium.filter.KeyFilter("highway", "type"))
     thing: Any
+    seen = 0
     for seen, thing in enumerate(reader, 1):
         if seen % TELL_EVERY == 0:
             tell("ways", seen)
@@ -118,6 +119,7 @@ def _read_ways(path: Path, classes: tuple[str, ...], tell: Progress) -> _Ways:
                 _take_way(ways, thing, code, known)
         elif thing.tags.get("type") == "restriction":
             _take_turn(ways, thing)
+    tell("ways", seen)
     return ways
 
 
@@ -140,6 +142,7 @@ def _read_nodes(path: Path, wanted: I64, tell: Progress) -> tuple[I32, I32, U8, 
         got_sign.append(read_sign(dict(node.tags)) if len(node.tags) else 0)
         if len(got_id) % TELL_EVERY == 0:
             tell("nodes", len(got_id))
+    tell("nodes", len(got_id))
     at = np.searchsorted(wanted, np.frombuffer(got_id, np.int64)) if got_id else np.zeros(0, np.int64)
     lon[at], lat[at], sign[at], found[at] = got_lon, got_lat, got_sign, True
     return lon, lat, sign, found
