@@ -7,7 +7,23 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stream.demo.draw import seeds
-from stream.demo.holds import LATERAL, SHARE, START_S, D, K, N, S, T, V, go_kernel, hold_kernel
+from stream.demo.holds import (
+    LATERAL,
+    NEXT,
+    PARK_S,
+    SHARE,
+    START_S,
+    D,
+    K,
+    N,
+    S,
+    T,
+    V,
+    go_kernel,
+    hold_kernel,
+    keep_kernel,
+    stand_kernel,
+)
 from stream.demo.motion import brakeable_kernel
 from stream.demo.path import caps_kernel, lay_paths
 from stream.demo.roads import Roads, roads_of
@@ -33,7 +49,7 @@ class Trips:
     names : tuple of str;  vehicle_ix : int32[T];  start_us : int64[T]
     origin : int32[T];  goes_on : uint8[T];  reach_s : float64[T]    see `route.routes`
     start_share, end_share : float64[T]   share of the first and last edge where the trip starts and ends
-    driver : float64[T, 6]        columns of `holds`: share of the limit driven, rates, side force, clock
+    driver : float64[T, 7]        columns of `holds`: share of the limit driven, rates, side force, clock ...
     """
 
     names: tuple[str, ...]
@@ -78,7 +94,9 @@ def drive_kernel(
                     kind[r], node_m[nodes + q], rule, r, level[hour], at_m, cap, brake, car, w, t_s, s_m, now,
                     seed, trip,
                 )  # fmt: skip
-        go_kernel(m[last - 1], 0.0, at_m, cap, brake, car, w, t_s, s_m, now, True)
+        go_kernel(m[last - 1], 0.0, at_m, cap, brake, car, w, t_s, s_m, now)
+        keep_kernel(now)
+        stand_kernel(now[T] + car[PARK_S], t_s, s_m, now)
         trip += 1
         time_start[trip] = int(now[N])
     return trip
@@ -97,7 +115,7 @@ def drive(roads: Roads, trips: Trips, level: F64, seed: int) -> Tracks:
     paths = lay_paths(roads, start, edge, trips.goes_on, (trips.start_share, trips.end_share))
     longest = int(np.diff(paths.point_start).max()) * 2 + 8
     at_m, cap, brake, w = (np.zeros(longest) for _ in range(4))
-    car, now = np.zeros(trips.driver.shape[1]), np.zeros(5)
+    car, now = np.zeros(trips.driver.shape[1]), np.zeros(2 * NEXT)
     state = seeds(n, np.random.default_rng(seed))
     time_start = np.zeros(n + 1, np.int64)
     room = 4096 + 60 * longest
@@ -135,7 +153,7 @@ def drive(roads: Roads, trips: Trips, level: F64, seed: int) -> Tracks:
 
 
 def drivers(n: int, rng: np.random.Generator) -> F64:
-    """Draw drivers: share of the limit, acceleration, braking, side force, clock 0, random others.
+    """Draw drivers: share of the limit, rates, side force, clock 0, random others, no parking.
 
     Rates: METHODS.md section 6, ordinary starts 1.0 to 1.5 and stops 1.5 to 2.5 m/s^2.
     """
@@ -147,6 +165,7 @@ def drivers(n: int, rng: np.random.Generator) -> F64:
             rng.uniform(1.8, 3.2, n),
             np.zeros(n),
             np.ones(n),
+            np.zeros(n),
         ]
     )
 

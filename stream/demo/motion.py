@@ -94,7 +94,6 @@ def leg_kernel(
     a: float,
     d: float,
     w: F64,
-    is_kept: bool,
     t_out: F64,
     s_out: F64,
     n: int,
@@ -103,7 +102,7 @@ def leg_kernel(
 
     Returns
     -------
-    time at x_m (s), speed there (m/s), number of knots (unchanged unless is_kept)
+    time at x_m (s), speed there (m/s), number of knots
 
     Source: METHODS.md section 6, uniform acceleration and braking.
     """
@@ -121,20 +120,17 @@ def leg_kernel(
         rest_m = length - up_m - down_m
         if rest_m < -1e-6:  # too short for these rates: one uniform change over the whole piece
             span = 2.0 * length / (v0 + v1)
-            if is_kept:
-                n = phase_kernel(t, s, v0, (v1 - v0) / span, span, t_out, s_out, n)
+            n = phase_kernel(t, s, v0, (v1 - v0) / span, span, t_out, s_out, n)
         else:
             up_s, down_s = (top - v0) / a, (top - v1) / d
             flat_s = max(rest_m, 0.0) / top
             span = up_s + flat_s + down_s
-            if is_kept:
-                n = phase_kernel(t, s, v0, a, up_s, t_out, s_out, n)
-                n = phase_kernel(t + up_s, s + up_m, top, 0.0, flat_s, t_out, s_out, n)
-                n = phase_kernel(t + up_s + flat_s, end - down_m, top, -d, down_s, t_out, s_out, n)
+            n = phase_kernel(t, s, v0, a, up_s, t_out, s_out, n)
+            n = phase_kernel(t + up_s, s + up_m, top, 0.0, flat_s, t_out, s_out, n)
+            n = phase_kernel(t + up_s + flat_s, end - down_m, top, -d, down_s, t_out, s_out, n)
         t += span
         s = end
-        if is_kept:
-            s_out[n - 1] = end
+        s_out[n - 1] = end
     return t, w[last], n
 
 

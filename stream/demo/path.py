@@ -112,10 +112,12 @@ def caps_kernel(
     k = 0
     at_m[0] = 0.0
     limit = mps[first] * share
+    bx = by = fx = fy = 0.0
     for i in range(first + 1, last - 1):
         k_lon = math.cos(lat[i] * math.pi / 180.0)
-        bx, by = look_kernel(lon, lat, m, i, first, last, -1, k_lon)
-        fx, fy = look_kernel(lon, lat, m, i, first, last, 1, k_lon)
+        for way in (-1, 1):
+            x, y = look_kernel(lon, lat, m, i, first, last, way, k_lon)
+            bx, by, fx, fy = (x, y, 0.0, 0.0) if way < 0 else (bx, by, x, y)
         bend = abs(math.atan2(-bx * fy + by * fx, -bx * fx - by * fy))
         after = mps[i] * share
         radius = TANGENT_M / max(math.tan(min(0.5 * bend, 1.55)), 1e-6)
@@ -161,7 +163,11 @@ def lay_paths(
     p = q = 0
     for i in range(n):
         first, last = int(start[i]), int(start[i + 1])
-        from_m = begin if goes_on[i] and i > 0 else share[0][i] * roads.edge_m[edge[first]]
+        from_m = (
+            begin
+            if goes_on[i] and i > 0 and edge[first] == edge[first - 1]
+            else share[0][i] * roads.edge_m[edge[first]]
+        )
         to_m = share[1][i] * roads.edge_m[edge[last - 1]]
         if last - first == 1:
             to_m = from_m + 0.5 * (roads.edge_m[edge[first]] - from_m)

@@ -57,9 +57,9 @@ def search_kernel(
     Shortest paths over directed edges by Dijkstra 1959; each driver weighs each edge by 0.7 to 1.3.
     The rows of dist it used are set back to infinity before it returns.
     """
-    n, n_touched, goal = 0, 1, -1
+    n, n_touched, goal = 1, 1, -1
     dist[origin], back_edge[origin], touched[0] = 0.0, -1, origin
-    n = push_kernel(heap_cost, heap_edge, n, 0.0, origin)
+    heap_cost[0], heap_edge[0] = 0.0, origin
     while n > 0:
         cost, edge = heap_cost[0], heap_edge[0]
         n = pop_kernel(heap_cost, heap_edge, n)
@@ -92,13 +92,17 @@ def routes_kernel(
 ) -> int:  # fmt: skip
     """Route trips from `trip` on until the output is full; returns the first trip not routed.
 
-    A trip that goes on starts on the edge where the trip before it ended. succ_out[k] is the successor
-    taken after edge k (-1 at the last). A trip without a way has one edge.
+    A trip that goes on starts on the edge where the trip before it ended, if that leads anywhere.
+    succ_out[k] is the successor taken after edge k (-1 at the last). A trip without a way has one edge.
     """
     size = edge_out.size
     while trip < n_trips:
         begin = start_out[trip]
-        first = edge_out[begin - 1] if goes_on[trip] == 1 and begin > 0 else origin[trip]
+        first = origin[trip]
+        if goes_on[trip] == 1 and begin > 0:
+            last = edge_out[begin - 1]
+            if succ_start[last + 1] > succ_start[last]:
+                first = last
         goal = search_kernel(
             trip, first, reach_s[trip], edge_m, edge_mps, is_open, succ_start, succ_edge, succ_turn, dist,
             back_succ, back_edge, heap_cost, heap_edge, touched,
