@@ -6,8 +6,9 @@ import numpy as np
 
 from stream.geodesy import wrap_e7
 from stream.kernel import kernel
+from stream.network.cells import CELL_E7, HALF_LAT_E7, HALF_LON_E7, find_tile, tile_key
 from stream.network.model import F64, I32
-from stream.network.routes import CELL_E7, HALF_LAT_E7, HALF_LON_E7, StreetIndex, find_tile, tile_key
+from stream.network.routes import StreetIndex
 
 MAX_ROADS = 10  # nearest roads looked at
 

@@ -117,17 +117,33 @@ def held_rows(states: NDArray[Any]) -> int:
     return int(states["is_held"].sum())
 
 
+def _used(name: str, states: NDArray[Any]) -> NDArray[np.int64]:
+    """Count the values of a list field that each record uses."""
+    n_columns = states["n_columns"].astype(np.int64)
+    if name in _KEPT:
+        return states["n_kept"].astype(np.int64)
+    if name in _GRID:
+        return n_columns * MAX_SURVIVORS
+    return n_columns if name in _COLUMN else np.where(n_columns > 0, MAX_SURVIVORS, 0)
+
+
+def _flat(name: str, states: NDArray[Any]) -> NDArray[Any]:
+    """Give a list field as one row a record; a view."""
+    return states[name].reshape(len(states), int(np.prod(STATE[name].shape)))
+
+
 def carry_columns(states: NDArray[Any]) -> dict[str, Any]:
-    """Spread records into columns, one a field: arrays for scalars, lists (the used part) for the rest."""
+    """Spread records into columns, one a field.
+
+    Returns
+    -------
+    dict
+        An array for a scalar; for a list (the used part of a field) all values and how many each record has.
+    """
     out: dict[str, Any] = {name: np.ascontiguousarray(states[name]) for name in _SCALARS}
-    n_kept, n_columns = states["n_kept"].tolist(), states["n_columns"].tolist()
-    for name in _KEPT:
-        out[name] = [row[:n].tolist() for row, n in zip(states[name], n_kept, strict=True)]
-    for name in _COLUMN:
-        out[name] = [row[:n].tolist() for row, n in zip(states[name], n_columns, strict=True)]
-    for name in _GRID:
-        out[name] = [row[:n].ravel().tolist() for row, n in zip(states[name], n_columns, strict=True)]
-    out["cost"] = [row.tolist() if n else [] for row, n in zip(states["cost"], n_columns, strict=True)]
+    for name in (*_KEPT, *_COLUMN, *_GRID, "cost"):
+        flat, lengths = _flat(name, states), _used(name, states)
+        out[name] = (flat[np.arange(flat.shape[1]) < lengths[:, None]], lengths)
     return out
 
 
@@ -146,11 +162,10 @@ def states_from_columns(columns: Mapping[str, Any]) -> NDArray[Any]:
     for name in _SCALARS:
         states[name] = np.asarray(columns[name])
     for name in (*_KEPT, *_COLUMN, *_GRID, "cost"):
-        flat = states[name].reshape(len(states), -1)
-        for i, values in enumerate(columns[name]):
-            if len(values) > flat.shape[1]:
-                raise ValueError(
-                    f"{name} of vehicle {i} holds {len(values)} values, room for {flat.shape[1]}"
-                )
-            flat[i, : len(values)] = values
+        values, lengths = columns[name]
+        flat = _flat(name, states)
+        if len(lengths) and lengths.max() > flat.shape[1]:
+            i = int(np.argmax(lengths))
+            raise ValueError(f"{name} of vehicle {i} holds {lengths[i]} values, room for {flat.shape[1]}")
+        flat[np.arange(flat.shape[1]) < lengths[:, None]] = values
     return states

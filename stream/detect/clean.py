@@ -12,8 +12,9 @@ from numpy.typing import NDArray
 
 from stream.geodesy import offset_m
 from stream.kernel import kernel
+from stream.network.cells import CELL_E7, HALF_LAT_E7, HALF_LON_E7, find_tile, tile_key
 from stream.network.model import F64, I32
-from stream.network.routes import CELL_E7, HALF_LAT_E7, HALF_LON_E7, StreetIndex, find_tile, tile_key
+from stream.network.routes import StreetIndex
 
 USED = -1
 BAD_COORDINATE, NULL_ISLAND, OUTSIDE_AREA, DUPLICATE, SAME_TIME_ELSEWHERE, LATE, IMPOSSIBLE_SPEED = range(7)

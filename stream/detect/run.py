@@ -13,10 +13,11 @@ from numpy.typing import NDArray
 
 from stream.config import Settings
 from stream.detect.clean import place_kernel
-from stream.detect.fused import CLOSE, RESERVE, Work, group_kernel, new_work, pass_kernel
+from stream.detect.fused import CLOSE, RESERVE, group_kernel, pass_kernel
 from stream.detect.parameters import parameters
 from stream.detect.passages import N_PASSAGE, N_SECTION, N_TRIP, N_UNFINISHED, N_USED, Out, new_out
 from stream.detect.records import DROP_REASONS, Found
+from stream.detect.settle import Work, new_work
 from stream.network.model import I32, I64, Streets
 from stream.network.routes import build_index
 

@@ -14,8 +14,9 @@ from stream.detect.follow import SAME_EDGE, SHORT_CHORD_M, TURNED, transition
 from stream.detect.search import MAX_LABELS, SHORT_M, Routes, find_route, row_kernel
 from stream.geodesy import wrap_e7
 from stream.kernel import kernel
+from stream.network.cells import CELL_E7, HALF_LAT_E7
 from stream.network.model import F64, I32, I64, NONE
-from stream.network.routes import CELL_E7, HALF_LAT_E7, StreetIndex
+from stream.network.routes import StreetIndex
 
 
 class Step(NamedTuple):

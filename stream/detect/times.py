@@ -96,16 +96,16 @@ def long_share(
     slack = dt_s - whole
     if slack <= 0.0 or whole <= 0.0:
         return part / whole if whole > 0.0 else 0.5
+    stood = 0.0 <= v0 < STAND_MPS
+    stands = 0.0 <= v1 < STAND_MPS
+    if stood or stands:
+        # Standing at both ends: how the slack is shared isn't known, half each is unbiased.
+        before = slack if not stands else (0.5 * slack if stood else 0.0)
+        return (part + before) / dt_s
     stop = stop_place(index, step, n, from_m, to_m)
-    if 0.0 <= v0 < STAND_MPS and v0 <= v1:
-        stop = from_m
-    elif 0.0 <= v1 < STAND_MPS:
-        stop = to_m
     if stop < 0.0:
         return part / whole
-    if gate_m > stop:
-        part += slack
-    return part / dt_s
+    return (part + slack if gate_m > stop else part) / dt_s
 
 
 @kernel

@@ -10,6 +10,7 @@ from stream.network.routes import StreetIndex
 
 # Reasons a trip ends, as in `records.END_REASONS`.
 END_GAP, END_DWELL, END_CLOSE, END_JUMP = range(4)
+TIMEOUT = END_JUMP + 1  # a dwell between gates: told apart until the row is written
 FAR_BACK_M = -1e9
 
 

@@ -12,14 +12,11 @@ from typing import Any, NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from stream.geodesy import metres_per_degree, offset_m, wrap_e7
+from stream.geodesy import offset_m, wrap_e7
 from stream.kernel import kernel
+from stream.network.cells import HALF_LON_E7, TILE, find_tiles, row_tables, spread_kernel
 from stream.network.model import F64, I32, I64, NONE, Streets
 
-CELL_E7 = 2880  # 1e-7 degree of latitude, about 32 m
-TILE = 32  # cells along a tile's side
-HALF_LON_E7 = 1_800_000_000
-HALF_LAT_E7 = 900_000_000
 LONGEST_SEGMENT_M = 300.0  # longer ones are cut, so that flat metres hold (METHODS.md section 3)
 
 SEGMENT = np.dtype(
@@ -78,36 +75,6 @@ class StreetIndex(NamedTuple):
 
 
 @kernel
-def tile_key(tile_row: int, tile_col: int) -> int:
-    """Join a tile's row and column into one number."""
-    return (tile_row << 24) | tile_col
-
-
-@kernel
-def find_tile(hash_key: I64, hash_tile: I32, key: int) -> int:
-    """Find a tile by its key: its number, -1 for one without roads, -2 outside the area."""
-    mask = hash_key.shape[0] - 1
-    at = (key * 0x9E3779B1 >> 7) & mask
-    while hash_key[at] != NONE:
-        if hash_key[at] == key:
-            return hash_tile[at]
-        at = (at + 1) & mask
-    return -2
-
-
-@kernel
-def put_tiles(keys: I64, tiles: I32, hash_key: I64, hash_tile: I32) -> None:
-    """Fill an empty hash (a power of two, over twice the keys) with distinct keys."""
-    mask = hash_key.shape[0] - 1
-    for i in range(keys.shape[0]):
-        at = (keys[i] * 0x9E3779B1 >> 7) & mask
-        while hash_key[at] != NONE:
-            at = (at + 1) & mask
-        hash_key[at] = keys[i]
-        hash_tile[at] = tiles[i]
-
-
-@kernel
 def fill_segments_kernel(
     point_start: I32, lon_e7: I32, lat_e7: I32, road_length: F64, segment_out: Any
 ) -> int:
@@ -150,119 +117,6 @@ def fill_segments_kernel(
             at += length * scale
             n += pieces
     return n
-
-
-@kernel
-def spread_kernel(
-    segment: Any,
-    reach_m: float,
-    tile_row_first: int,
-    cell_width: I64,
-    hash_key: I64,
-    hash_tile: I32,
-    cell_count: I32,
-    cell_segment: I32,
-    key_out: I64,
-    what: int,
-) -> int:
-    """Walk the cells within reach of each segment.
-
-    Parameters
-    ----------
-    what : int    0: write tile keys to `key_out` (or only count, when it is empty);
-                  1: count segments by cell; 2: fill `cell_segment`, using `cell_count` as cursors
-
-    Returns
-    -------
-    n : int       keys written or cells touched
-    """
-    n = 0
-    writing = key_out.shape[0] > 0
-    for i in range(segment.shape[0]):
-        s = segment[i]
-        k_lon, k_lat = metres_per_degree(s.lat * 1e-7)
-        ex = s.ux * s.length
-        ey = s.uy * s.length
-        west = min(0.0, ex) - reach_m
-        east = max(0.0, ex) + reach_m
-        south = min(0.0, ey) - reach_m
-        north = max(0.0, ey) + reach_m
-        lat0 = np.int64(s.lat) + HALF_LAT_E7
-        row_a = int((lat0 + south / k_lat * 1e7) // CELL_E7)
-        row_b = int((lat0 + north / k_lat * 1e7) // CELL_E7)
-        for tile_row in range(row_a >> 5, (row_b >> 5) + 1):
-            width = cell_width[tile_row - tile_row_first]
-            n_cols = (2 * HALF_LON_E7 + width - 1) // width
-            n_tile_cols = (n_cols + TILE - 1) // TILE
-            lon0 = np.int64(s.lon) + HALF_LON_E7
-            col_a = math.floor((lon0 + west / k_lon * 1e7) / width)
-            col_b = math.floor((lon0 + east / k_lon * 1e7) / width)
-            if what == 0:
-                for tile_col in range(col_a >> 5, (col_b >> 5) + 1):
-                    if writing:
-                        key_out[n] = tile_key(tile_row, tile_col % n_tile_cols)
-                    n += 1
-                continue
-            half_w = 0.5 * width * 1e-7 * k_lon
-            half_h = 0.5 * CELL_E7 * 1e-7 * k_lat
-            limit = reach_m + math.sqrt(half_w * half_w + half_h * half_h)
-            for row in range(max(row_a, tile_row * TILE), min(row_b, tile_row * TILE + TILE - 1) + 1):
-                cy = ((row + 0.5) * CELL_E7 - lat0) * 1e-7 * k_lat
-                for col in range(col_a, col_b + 1):
-                    cx = ((col + 0.5) * width - lon0) * 1e-7 * k_lon
-                    along = min(max(cx * s.ux + cy * s.uy, 0.0), np.float64(s.length))
-                    dx = cx - along * s.ux
-                    dy = cy - along * s.uy
-                    if dx * dx + dy * dy > limit * limit:
-                        continue
-                    real = col % n_cols
-                    tile = find_tile(hash_key, hash_tile, tile_key(tile_row, real >> 5))
-                    if tile < 0:
-                        continue
-                    cell = tile * TILE * TILE + (row & 31) * TILE + (real & 31)
-                    if what == 1:
-                        cell_count[cell] += 1
-                    else:
-                        cell_segment[cell_count[cell]] = i
-                        cell_count[cell] += 1
-                    n += 1
-    return n
-
-
-def _row_tables(lat_e7: I32) -> tuple[int, F64, int, I64]:
-    """Make scales by row of cells and cell widths by row of tiles, for the latitudes of a network."""
-    tile_rows = (np.array([lat_e7.min(), lat_e7.max()], np.int64) + HALF_LAT_E7) // CELL_E7 // TILE
-    first, last = int(tile_rows[0]) - 2, int(tile_rows[1]) + 2
-    rows = np.arange(first * TILE, (last + 1) * TILE)
-    lat = np.clip((rows + 0.5) * CELL_E7 * 1e-7 - 90.0, -89.9, 89.9)
-    scale = np.array([metres_per_degree(float(x)) for x in lat]) * 1e-7
-    middle = (np.arange(first, last + 1) + 0.5) * TILE * CELL_E7 * 1e-7 - 90.0
-    width = np.ceil(CELL_E7 / np.cos(np.radians(np.clip(middle, -89.0, 89.0)))).astype(np.int64)
-    return first * TILE, scale, first, width
-
-
-def _tiles(segment: NDArray[Any], reach_m: float, tile_row_first: int, width: I64) -> tuple[I64, I32, int]:
-    """Find the tiles within reach of a road, and their neighbours, as a hash; give the count of the first."""
-    none64, none32 = np.empty(0, np.int64), np.empty(0, np.int32)
-    args = (segment, reach_m, tile_row_first, width, none64, none32, none32, none32)
-    keys = np.empty(spread_kernel(*args, none64, 0), np.int64)
-    spread_kernel(*args, keys, 0)
-    keys = np.unique(keys)
-    rows, cols = keys >> 24, keys & 0xFFFFFF
-    around: list[I64] = []
-    for d_row in (-1, 0, 1):
-        other = np.clip(rows + d_row, tile_row_first, tile_row_first + len(width) - 1)
-        ratio = width[rows - tile_row_first] / width[other - tile_row_first]
-        n_cells = (2 * HALF_LON_E7 + width[other - tile_row_first] - 1) // width[other - tile_row_first]
-        n_cols = (n_cells + TILE - 1) // TILE
-        beside = [(np.floor(cols * ratio).astype(np.int64) + d_col) % n_cols for d_col in (-1, 0, 1, 2)]
-        around.extend((other << 24) | col for col in beside)
-    extra = np.setdiff1d(np.unique(np.concatenate(around)), keys)
-    size = 1 << max(4, int(2 * (len(keys) + len(extra))).bit_length())
-    hash_key, hash_tile = np.full(size, NONE, np.int64), np.full(size, NONE, np.int32)
-    put_tiles(keys, np.arange(len(keys), dtype=np.int32), hash_key, hash_tile)
-    put_tiles(extra, np.full(len(extra), NONE, np.int32), hash_key, hash_tile)
-    return hash_key, hash_tile, len(keys)
 
 
 def _successor_costs(streets: Streets, turn: float, reverse: float, banned: float) -> NDArray[np.float32]:
@@ -378,8 +232,8 @@ def build_index(
     points = (streets.point_start, streets.point_lon_e7, streets.point_lat_e7, streets.road_length_m)
     segment = np.zeros(fill_segments_kernel(*points, np.empty(0, SEGMENT)), SEGMENT)
     fill_segments_kernel(*points, segment)
-    row_first, scale, tile_row_first, width = _row_tables(streets.point_lat_e7)
-    hash_key, hash_tile, n_tiles = _tiles(segment, radius_m, tile_row_first, width)
+    row_first, scale, tile_row_first, width = row_tables(streets.point_lat_e7)
+    hash_key, hash_tile, n_tiles = find_tiles(segment, radius_m, tile_row_first, width)
     count = np.zeros(n_tiles * TILE * TILE + 1, np.int32)
     none64, none32 = np.empty(0, np.int64), np.empty(0, np.int32)
     args = (segment, radius_m, tile_row_first, width, hash_key, hash_tile)
