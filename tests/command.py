@@ -60,6 +60,7 @@ def refused(*args: object, cwd: Path, code: int = 1) -> str:
     assert ran.returncode == code, (ran.returncode, ran.stdout, ran.stderr)
     assert ran.stdout == ""
     assert "Traceback" not in ran.stderr
-    message = ran.stderr.strip().splitlines()[-1]
-    assert message.startswith("turntally: ")
-    return message
+    notes, found, message = ran.stderr.rpartition("turntally: ")
+    assert found
+    assert "Usage" not in notes
+    return message.strip()

@@ -6,8 +6,8 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 
 from stream.cli.bars import Bars
-from stream.cli.say import Session, counts
-from stream.errors import ConfigError
+from stream.cli.say import Session, counts, warn
+from stream.errors import ConfigError, StreamError
 
 if TYPE_CHECKING:
     from stream.ingest import Progress
@@ -38,21 +38,43 @@ def ingest(
     from stream.ingest import ingest as take_in
 
     settings = session.settings()
-    with Bars(session) as bars:
+    at: list[Progress] = []
 
-        def draw(at: "Progress") -> None:
-            rate = at.rows / at.seconds if at.seconds > 0 else 0
-            note = f"{at.rows:,} rows  {rate:,.0f} rows/s  {at.passages:,} passages"
-            bars.show(f"{at.batch} ({at.batch_ix + 1} of {at.n_batches})", at.done, at.total, note)
+    def draw(now: "Progress") -> None:
+        at[:] = [now]
+        rate = now.rows / now.seconds if now.seconds > 0 else 0
+        note = f"{now.rows:,} rows  {rate:,.0f} rows/s  {now.passages:,} passages"
+        bars.show(f"{now.batch} ({now.batch_ix + 1} of {now.n_batches})", now.done, now.total, note)
 
-        reports = take_in(session.store, files or [], settings, batch, close, draw)
+    if files and not _is_compiled():
+        session.note("compiling the kernels, the first time only: some 30 seconds")
+    try:
+        with Bars(session) as bars:
+            reports = take_in(session.store, files or [], settings, batch, close, draw)
+    except (StreamError, KeyboardInterrupt):
+        if at and at[0].batch_ix:
+            warn(f"batches before {at[0].batch} are in ({at[0].batch_ix} of {at[0].n_batches})")
+        raise
     whole = {"store": str(session.store), "batches": reports}
     session.result(whole, "\n".join(_told(one) for one in reports))
 
 
+def _is_compiled() -> bool:
+    """Tell whether the pass over the pings has been compiled here since its source last changed."""
+    from stream.detect import fused
+
+    stats: Any = getattr(fused.pass_kernel, "stats", None)
+    if stats is None:  # compiling is switched off
+        return True
+    kept = Path(stats.cache_path).glob("fused.pass_kernel-*.nbi")
+    return any(path.stat().st_mtime >= Path(fused.__file__).stat().st_mtime for path in kept)
+
+
 def _told(one: dict[str, Any]) -> str:
-    if one["status"] not in ("taken in", "closed"):
-        return f"{one['batch']}: {one['status']}"
+    if one["status"] == "already in":
+        return f"{one['batch']}: already in since {one['since']:%Y-%m-%d %H:%M} UTC, nothing to do"
+    if one["status"] == "nothing open":
+        return "nothing is open, nothing to close"
     lines = [
         f"{one['batch']}: {one['status']}, {one['rows_in']:,} rows in, {one['rows_used']:,} used, "
         f"{one['rows_dropped']:,} dropped, {one['n_vehicles']:,} vehicles, {one['passages']:,} passages, "
@@ -60,6 +82,8 @@ def _told(one: dict[str, Any]) -> str:
     ]
     if one["dropped"]:
         lines.append(f"  dropped: {counts(one['dropped'])}")
+    if one["rows_held"]:
+        lines.append(f"  held for later: {one['rows_held']:,}")
     if one["unfinished"]:
         lines.append(f"  unfinished passages: {counts(one['unfinished'])}")
     return "\n".join(lines)

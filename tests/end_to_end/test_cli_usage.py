@@ -81,13 +81,13 @@ def test_unknown_key_names_the_nearest(here: Path) -> None:
     """A wrong key in turntally.yaml is refused with the nearest known one."""
     (here / "turntally.yaml").write_text("trips:\n  max_gap: 60\n", encoding="utf-8")
     message = refused("quantiles", cwd=here, code=2)
-    assert message == "turntally: turntally.yaml: unknown key trips.max_gap; did you mean max_gap_s?"
+    assert message == "turntally.yaml: unknown key trips.max_gap; did you mean max_gap_s?"
 
 
 def test_store_missing_says_what_to_do(tmp_path: Path) -> None:
     """A command that needs a store says which is missing and how it is made, and makes none."""
     message = refused("status", "--store", "no.duckdb", cwd=tmp_path)
-    assert message == "turntally: no.duckdb: no such store; make it with `turntally network EXTRACT`"
+    assert message == "no.duckdb: no such store; make it with `turntally network EXTRACT`"
     assert list(tmp_path.iterdir()) == []
 
 
