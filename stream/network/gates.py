@@ -21,6 +21,7 @@ from stream.network.model import F64, I32, NONE
 
 HALF_LINE_M = 15.0  # a gate's line reaches no further than this to either side
 APART_M = 0.05  # each of two gates that meet at half of a link keeps this far from the middle
+GATES_AT_ONCE = 20_000  # lines laid together: bounds memory, changes no result
 OWN_ROAD_M = 1.0  # the arm's own road this near to the gate is the gate's place, not a neighbour
 
 
@@ -115,7 +116,8 @@ def build_gates(graph: Graph, links: Links, arms: Arms, settings: Settings) -> G
             report[f"{what}_shortened"] += int(metres == half_m)
             gate_m[side, arm], gate_edge[side, arm] = metres, edge
             edge_arm[side, edge], edge_at[side, edge] = arm, at
-    lines = [_lines(graph, links, arms, gate_edge[side], edge_at[side]) for side in (0, 1)]
+    neighbours = _Neighbours(graph, links)
+    lines = [_lines(neighbours, graph, arms, gate_edge[side], edge_at[side]) for side in (0, 1)]
     return Gates(
         gate_m[0],
         gate_m[1],
@@ -136,11 +138,38 @@ def _half_m(length_m: float) -> float:
     return 0.5 * length_m - min(APART_M, 0.05 * length_m)
 
 
-def _road_lines(graph: Graph) -> NDArray[np.object_]:
-    """Give the roads as lines in degrees."""
-    points = np.stack([graph.point_lon_e7, graph.point_lat_e7], axis=1) * 1e-7
-    road = np.repeat(np.arange(len(graph.point_start) - 1), np.diff(graph.point_start))
-    return np.asarray(shapely.linestrings(points, indices=road), np.object_)
+class _Neighbours:
+    """All roads as lines in degrees, with an index to find those near a gate."""
+
+    def __init__(self, graph: Graph, links: Links) -> None:
+        points = np.stack([graph.point_lon_e7, graph.point_lat_e7], axis=1) * 1e-7
+        road = np.repeat(np.arange(len(graph.point_start) - 1), np.diff(graph.point_start))
+        self._roads = np.asarray(shapely.linestrings(points, indices=road), np.object_)
+        self._tree = shapely.STRtree(self._roads)
+        self._link = np.full(len(self._roads), NONE, np.int32)
+        self._link[links.road] = np.repeat(np.arange(len(links.length_m)), np.diff(links.start))
+
+    def free_m(self, rays: NDArray[np.object_], link: I32) -> F64:
+        """Give how far each ray goes before it meets another road, at most its own length.
+
+        Parameters
+        ----------
+        rays
+            Lines of 2 HALF_LINE_M from a gate, in degrees.
+        link
+            The gates' links: their own roads right at the gate don't count.
+        """
+        free = np.full(len(rays), 2.0 * HALF_LINE_M)
+        ray_ix, road_ix = self._tree.query(rays, predicate="intersects")
+        met = shapely.intersection(rays[ray_ix], self._roads[road_ix])
+        points, of = shapely.get_coordinates(met, return_index=True)
+        start = shapely.get_coordinates(rays)[0::2][ray_ix[of]]
+        whole = shapely.get_coordinates(rays)[1::2][ray_ix[of]] - start
+        share = np.sum((points - start) * whole, axis=1) / np.sum(whole * whole, axis=1)
+        metres = share * 2.0 * HALF_LINE_M
+        is_own = (self._link[road_ix[of]] == link[ray_ix[of]]) & (metres < OWN_ROAD_M)
+        np.minimum.at(free, ray_ix[of][~is_own], metres[~is_own])
+        return free
 
 
 def _across(graph: Graph, edge: I32, at_m: F64) -> tuple[F64, F64, F64, F64]:
@@ -158,42 +187,19 @@ def _across(graph: Graph, edge: I32, at_m: F64) -> tuple[F64, F64, F64, F64]:
     return lon, lat, np.sin(right) / scale[:, 0], np.cos(right) / scale[:, 1]
 
 
-def _lines(graph: Graph, links: Links, arms: Arms, edge: I32, edge_at: F64) -> F64:
+def _lines(neighbours: _Neighbours, graph: Graph, arms: Arms, edge: I32, edge_at: F64) -> F64:
     """Lay the lines of all gates of one kind."""
     out = np.full((len(edge), 4), np.nan)
-    rows = np.flatnonzero(edge >= 0)
-    if not len(rows):
-        return out
-    lon, lat, step_lon, step_lat = _across(graph, edge[rows], edge_at[edge[rows]])
-    roads = _road_lines(graph)
-    tree = shapely.STRtree(roads)
-    link_of = np.full(len(roads), NONE, np.int32)
-    link_of[links.road] = np.repeat(np.arange(len(links.length_m)), np.diff(links.start))
-    for side, sign in ((0, -1.0), (2, 1.0)):
-        # Look twice as far as a line may reach: the line goes halfway to what is met.
-        far = 2.0 * HALF_LINE_M * sign
-        ends = np.stack([lon + far * step_lon, lat + far * step_lat], axis=1)
-        rays = shapely.linestrings(np.stack([np.stack([lon, lat], axis=1), ends], axis=1))
-        free_m = _free_m(np.asarray(rays, np.object_), roads, tree, link_of, arms.link[rows])
-        reach = 0.5 * free_m * sign
-        out[rows, side], out[rows, side + 1] = lon + reach * step_lon, lat + reach * step_lat
+    every = np.flatnonzero(edge >= 0)
+    for rows in np.split(every, range(GATES_AT_ONCE, len(every), GATES_AT_ONCE)):
+        lon, lat, step_lon, step_lat = _across(graph, edge[rows], edge_at[edge[rows]])
+        for side, sign in ((0, -1.0), (2, 1.0)):
+            # Look twice as far as a line may reach: the line goes halfway to what is met.
+            far = 2.0 * HALF_LINE_M * sign
+            ends = np.stack([lon + far * step_lon, lat + far * step_lat], axis=1)
+            rays = shapely.linestrings(np.stack([np.stack([lon, lat], axis=1), ends], axis=1))
+            free_m = neighbours.free_m(np.asarray(rays, np.object_), arms.link[rows])
+            reach = 0.5 * free_m * sign
+            out[rows, side], out[rows, side + 1] = lon + reach * step_lon, lat + reach * step_lat
     out[:, 0::2] = (out[:, 0::2] + 180.0) % 360.0 - 180.0
     return np.round(out, 7)
-
-
-def _free_m(
-    rays: NDArray[np.object_], roads: NDArray[np.object_], tree: shapely.STRtree, link_of: I32, link: I32
-) -> F64:
-    """Give how far each ray goes before it meets another road, at most its own length."""
-    free = np.full(len(rays), 2.0 * HALF_LINE_M)
-    ray_ix, road_ix = tree.query(rays, predicate="intersects")
-    met = shapely.intersection(rays[ray_ix], roads[road_ix])
-    points, of = shapely.get_coordinates(met, return_index=True)
-    start = shapely.get_coordinates(rays)[0::2][ray_ix[of]]
-    whole = shapely.get_coordinates(rays)[1::2][ray_ix[of]] - start
-    gone = points - start
-    share = np.sum(gone * whole, axis=1) / np.sum(whole * whole, axis=1)
-    metres = share * 2.0 * HALF_LINE_M
-    is_own = (link_of[road_ix[of]] == link[ray_ix[of]]) & (metres < OWN_ROAD_M)
-    np.minimum.at(free, ray_ix[of][~is_own], metres[~is_own])
-    return free

@@ -5,6 +5,7 @@ and timed where that is so only at times.
 """
 
 import heapq
+from array import array
 from collections import Counter
 from collections.abc import Iterable
 from dataclasses import dataclass
@@ -139,7 +140,8 @@ def build_movements(
     """
     inside = _Inside(graph, succ, road_inside, arms)
     always, either = _by_first(forbidden.always), _by_first(forbidden.always | forbidden.timed)
-    rows: list[tuple[int, int, float, float, bool, bool]] = []
+    came, goes, turned, inside_m = array("i"), array("i"), array("d"), array("d")
+    banned, timed = array("b"), array("b")
     for arm in np.flatnonzero(arms.is_inbound).tolist():
         on_ring = junctions.kind[arms.junction[arm]] in ("roundabout", "circular")
         every = inside.reach(arm, {}, on_ring)
@@ -149,19 +151,22 @@ def build_movements(
         for out in sorted(every):
             angle = 180.0 if out == arm else float(turn_deg(heading, float(arms.bearing_deg[out])))
             is_legal = out in legal
-            metres = legal[out] if is_legal else every[out]
-            rows.append((arm, out, angle, metres, not is_legal, is_legal and out not in untimed))
-    column = list(zip(*rows, strict=True)) if rows else [()] * 6
-    names = [maneuver_of(angle, limits) for angle in column[2]]
+            came.append(arm)
+            goes.append(out)
+            turned.append(angle)
+            inside_m.append(legal[out] if is_legal else every[out])
+            banned.append(not is_legal)
+            timed.append(is_legal and out not in untimed)
+    names = [maneuver_of(angle, limits) for angle in turned]
     report = Counter(names)
-    report.update(banned=sum(column[4]), timed=sum(column[5]))
+    report.update(banned=sum(banned), timed=sum(timed))
     return Movements(
-        np.array(column[0], np.int32),
-        np.array(column[1], np.int32),
-        np.array(column[2], np.float64),
+        np.array(came, np.int32),
+        np.array(goes, np.int32),
+        np.array(turned, np.float64),
         names,
-        np.array(column[3], np.float64),
-        np.array(column[4], np.bool_),
-        np.array(column[5], np.bool_),
+        np.array(inside_m, np.float64),
+        np.array(banned, np.bool_),
+        np.array(timed, np.bool_),
         dict(sorted(report.items())),
     )

@@ -143,7 +143,7 @@ def along(points: np.ndarray, metres: float) -> tuple[float, float]:
 
 
 def test_gates_stand_at_their_distance_before_and_after_the_mouth(real: tuple[Built, Settings]) -> None:
-    """An open way along the link runs from gate to mouth (exits: from mouth to gate) in exactly its distance."""
+    """An open way along the link runs from gate to mouth (exits: back from it) in exactly its distance."""
     built, _ = real
     s, arm = built.streets, built.tables["arm"]
     mouth = arm["mouth_node_id"].to_list()
