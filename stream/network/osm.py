@@ -127,10 +127,12 @@ def _read_nodes(path: Path, wanted: I64, tell: Progress) -> tuple[I32, I32, U8, 
     """Second pass: location and signs of the wanted nodes (ascending ids), and which were found."""
     lon, lat = np.zeros(len(wanted), np.int32), np.zeros(len(wanted), np.int32)
     sign, found = np.zeros(len(wanted), np.uint8), np.zeros(len(wanted), np.bool_)
-    tracker = osmium.IdTracker()
-    for node_id in wanted.tolist():
-        tracker.add_node(node_id)
-    reader = osmium.FileProcessor(str(path), osmium.osm.NODE).with_filter(tracker.id_filter())
+    reader = osmium.FileProcessor(str(path), osmium.osm.NODE)
+    if len(wanted) and wanted[0] >= 0:  # the filter knows no negative ids, which editors give to new nodes
+        tracker = osmium.IdTracker()
+        for node_id in wanted.tolist():
+            tracker.add_node(node_id)
+        reader = reader.with_filter(tracker.id_filter())
     got_id, got_lon, got_lat, got_sign = array("q"), array("i"), array("i"), array("B")
     node: Any
     for node in reader:
@@ -143,8 +145,13 @@ def _read_nodes(path: Path, wanted: I64, tell: Progress) -> tuple[I32, I32, U8, 
         if len(got_id) % TELL_EVERY == 0:
             tell("nodes", len(got_id))
     tell("nodes", len(got_id))
-    at = np.searchsorted(wanted, np.frombuffer(got_id, np.int64)) if got_id else np.zeros(0, np.int64)
-    lon[at], lat[at], sign[at], found[at] = got_lon, got_lat, got_sign, True
+    ids = np.array(got_id, np.int64)
+    at = np.searchsorted(wanted, ids)
+    ours = np.flatnonzero(at < len(wanted))
+    ours = ours[wanted[at[ours]] == ids[ours]]
+    at = at[ours]
+    lon[at], lat[at] = np.array(got_lon, np.int32)[ours], np.array(got_lat, np.int32)[ours]
+    sign[at], found[at] = np.array(got_sign, np.uint8)[ours], True
     return lon, lat, sign, found
 
 

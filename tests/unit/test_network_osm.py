@@ -2,6 +2,7 @@
 
 import bz2
 import gzip
+import re
 from collections.abc import Callable
 from pathlib import Path
 
@@ -139,6 +140,14 @@ def test_order_of_the_file_does_not_matter(tmp_path: Path) -> None:
     there, back = taken(sketch.write(tmp_path)), taken(sketch.write(tmp_path, backwards=True))
     assert references(there) == references(back)
     assert there.node_lat_e7.tolist() == back.node_lat_e7.tolist()
+
+
+def test_negative_ids_are_read(tmp_path: Path) -> None:
+    """Editors give negative ids to what is not uploaded yet; such a file is read all the same."""
+    sketch = cross()
+    path = sketch.write(tmp_path)
+    path.write_text(re.sub(r"(id|ref)='(\d+)'", r"\1='-\2'", path.read_text()))
+    assert references(taken(path)) == [(-w, [-1, 10 - w]) for w in (15, 14, 13, 12)]
 
 
 def test_missing_file_is_named() -> None:
