@@ -9,11 +9,11 @@ from typing import Any
 
 import numpy as np
 import polars as pl
+import pyarrow as pa
 from numpy.typing import NDArray
 
 from stream.detect.carry import (
     CARRY_VERSION,
-    STATE,
     carry_columns,
     held_rows,
     new_states,
@@ -27,18 +27,9 @@ from stream.store.vehicles import VehicleNames, name_code
 _PUT_ROWS = 20_000  # vehicles written at once, about 20 MB
 
 
-def _carry_types() -> dict[str, Any]:
-    """Give the type of each column of the carry, from the record's own; lists may all be empty."""
-    out: dict[str, Any] = {name: pl.List(kind) for name, kind in _WAITING.items()}
-    for name in STATE.names or ():
-        plain = pl.Series(np.zeros(0, STATE[name].base)).dtype
-        out[name] = pl.List(plain) if STATE[name].shape else plain
-    return out
-
-
 Pings = tuple[NDArray[np.int32], NDArray[np.int64], NDArray[np.float64], NDArray[np.float64]]
 _NO_PINGS: Pings = (np.zeros(0, np.int32), np.zeros(0, np.int64), np.zeros(0), np.zeros(0))
-_WAITING = {"waiting_us": pl.Int64, "waiting_lon": pl.Float64, "waiting_lat": pl.Float64}
+_WAITING = ("waiting_us", "waiting_lon", "waiting_lat")
 
 
 class Fleet:
@@ -154,19 +145,17 @@ class Fleet:
         for start in range(0, len(self.names), _PUT_ROWS):
             rows = slice(start, start + _PUT_ROWS)
             names = self.names[rows]
-            columns = {"vehicle": names, **carry_columns(self.states[rows]), **self._lists(start, len(names))}
-            self._store.run("carry/put_carry", said, pl.DataFrame(columns, schema_overrides=_carry_types()))
+            columns = {**carry_columns(self.states[rows]), **self._lists(start, len(names))}
+            series = {name: _series(column) for name, column in columns.items()}
+            self._store.run("carry/put_carry", said, pl.DataFrame({"vehicle": names, **series}))
 
     def _lists(self, start: int, n: int) -> dict[str, Any]:
-        """Give the pings held back, as one list a vehicle, for vehicles start to start + n."""
+        """Give the pings held back, as values and how many each has, for vehicles start to start + n."""
         mine = (self._waiting[0] >= start) & (self._waiting[0] < start + n)
         order = np.argsort(self._waiting[0][mine], kind="stable")
-        ends = np.cumsum(np.bincount(self._waiting[0][mine] - start, minlength=n))[:-1]
-        sorted_columns = (column[mine][order] for column in self._waiting[1:])
-        return {
-            name: [part.tolist() for part in np.split(column, ends)]
-            for name, column in zip(_WAITING, sorted_columns, strict=True)
-        }
+        lengths = np.bincount(self._waiting[0][mine] - start, minlength=n)
+        names = zip(_WAITING, self._waiting[1:], strict=True)
+        return {name: (column[mine][order], lengths) for name, column in names}
 
 
 def _joined(first: Pings, second: Pings) -> Pings:
@@ -178,10 +167,25 @@ def _joined(first: Pings, second: Pings) -> Pings:
     )
 
 
+def _series(column: Any) -> pl.Series:
+    """Make a column of plain values, or of lists from all their values and their lengths."""
+    if not isinstance(column, tuple):
+        return pl.Series(column)
+    values, lengths = column
+    offsets = np.concatenate([[0], np.cumsum(lengths)])
+    lists = pa.LargeListArray.from_arrays(pa.array(offsets, pa.int64()), pa.array(values))
+    return pl.Series(lists)
+
+
 def _columns(held: pl.DataFrame) -> dict[str, Any]:
+    """Take the columns of loaded states apart as `carry_columns` gives them."""
     out: dict[str, Any] = {}
     for name in held.columns:
         if name not in ("ix", "carry_version", *_WAITING):
             column = held[name]
-            out[name] = column.to_list() if column.dtype == pl.List else column.to_numpy()
+            if column.dtype == pl.List:
+                lists = column.to_arrow()
+                out[name] = (lists.flatten().to_numpy(), column.list.len().cast(pl.Int64).to_numpy())
+            else:
+                out[name] = column.to_numpy()
     return out

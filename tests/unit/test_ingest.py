@@ -1,7 +1,7 @@
 """Batches: taken in as a whole or not at all, each ping once. Detection is the stand-in's."""
 
 import itertools
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -15,10 +15,9 @@ from stream.store import Store, put_network
 from stream.store.audit import run_audit
 from stream.store.ledger import network_config
 from stream.store.status import status
+from tests.archive import T0, archive, drive, dump, sums, write
 from tests.stand_in import install, plan
 
-T0 = 1_700_000_000  # 2023-11-14T22:13:20Z, a Tuesday; 00:13:20 on Wednesday in Helsinki (UTC+2)
-Row = tuple[str, int, float, float]
 Make = Callable[..., Settings]
 
 
@@ -31,49 +30,6 @@ def store_path(tmp_path: Path, monkeypatch: pytest.MonkeyPatch, settings: Settin
     with Store.open(path, create=True) as store:
         put_network(store, plan(), network_config(settings))
     return path
-
-
-def drive(vehicle: str, n: int, start: int = T0, step_s: int = 10) -> list[Row]:
-    """Give n pings of one vehicle."""
-    return [(vehicle, start + i * step_s, 0.5, 0.5) for i in range(n)]
-
-
-def write(path: Path, rows: Iterable[Row], *, is_sorted: bool = True) -> Path:
-    """Write pings as CSV, in the order of time."""
-    ordered = sorted(rows, key=lambda r: r[1]) if is_sorted else list(rows)
-    lines = [f"{v},{t},{lon},{lat}" for v, t, lon, lat in ordered]
-    path.write_text("\n".join(["vehicle_id,ts,lon,lat", *lines]) + "\n", encoding="utf-8")
-    return path
-
-
-def dump(path: Path, *, by_batch: bool = True) -> dict[str, list[tuple[Any, ...]]]:
-    """Read every table as sorted rows; without the clock, and without batch numbers where not wanted."""
-    out = {}
-    left_out = {"started_at", "ended_at", "made_at", "put_at", "created_us"} | (
-        set() if by_batch else {"batch_id"}
-    )
-    with duckdb.connect(str(path), read_only=True) as con:
-        tables = [r[0] for r in con.execute("select table_name from duckdb_tables()").fetchall()]
-        for table in tables:
-            names = [r[0] for r in con.execute(f"describe {table}").fetchall() if r[0] not in left_out]
-            rows = con.execute(f"select {', '.join(names)} from {table}").fetchall()
-            out[table] = sorted((r for r in rows if r[0] not in left_out), key=repr)
-    return out
-
-
-def sums(path: Path) -> dict[str, Any]:
-    """Read what must not depend on how an archive was cut into batches."""
-    all_of = dump(path, by_batch=False)
-    kept = {t: all_of[t] for t in ("passage", "section", "unfinished", "trip", "stratum", "tally")}
-    with duckdb.connect(str(path), read_only=True) as con:
-        for table, keys, values in (
-            ("histogram", "tally, stratum_id, bin_ix", "sum(n)"),
-            ("moment", "tally, stratum_id", "sum(n), sum(sum), sum(sum_sq)"),
-            ("batch_count", "reason", "sum(n)"),
-        ):
-            query = f"select {keys}, {values} from {table} group by {keys} order by all"
-            kept[table] = con.execute(query).fetchall()
-    return kept
 
 
 def faults(path: Path) -> list[dict[str, Any]]:
@@ -158,12 +114,6 @@ def test_same_name_with_other_content_is_refused(
     with pytest.raises(StoreError, match=r"batch day\.csv is in with other content .*retract.*--batch"):
         ingest(store_path, [tmp_path / "day.csv"], settings)
     assert before == dump(store_path)
-
-
-def archive() -> list[Row]:
-    """Give three vehicles over 300 s, one with a silence of 130 s, with a duplicate and pings outside."""
-    rows = drive("a", 31) + drive("b", 8, T0 + 3) + drive("b", 9, T0 + 203) + drive("c", 75, T0 + 1, 4)
-    return [*rows, rows[40], ("c", T0 + 50, -1.0, 0.5), ("d", T0 + 70, -1.0, 0.5)]
 
 
 def test_days_one_by_one_equal_all_at_once(store_path: Path, tmp_path: Path, settings: Settings) -> None:
