@@ -8,6 +8,7 @@ import difflib
 import hashlib
 import itertools
 import json
+from datetime import date
 from importlib import resources
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
@@ -234,6 +235,37 @@ class Settings(_Part):
         return hashlib.sha256(text.encode()).hexdigest()[:16]
 
 
+class Noise(_Part):
+    """Position error of the demo's receivers, first-order Gauss-Markov."""
+
+    sigma_m: float = Field(ge=0, le=50)
+    tau_s: float = Field(gt=0, le=3600)
+
+
+class Faults(_Part):
+    """Shares of the demo's pings that are spoilt on purpose."""
+
+    duplicate: float = Field(ge=0, le=0.1)
+    null_island: float = Field(ge=0, le=0.1)
+    jump: float = Field(ge=0, le=0.1)
+
+
+class Demo(_Part):
+    """The invented town's traffic."""
+
+    seed: int = Field(ge=0)
+    first_day: date
+    days: int = Field(ge=1, le=31)
+    vehicles: int = Field(ge=1, le=5000)
+    trips_a_day: float = Field(gt=0, le=20)
+    reach_s: tuple[float, float]
+    park_share: float = Field(ge=0, le=1)
+    park_s: tuple[float, float]
+    intervals: dict[float, float] = Field(min_length=1)
+    noise: Noise
+    faults: Faults
+
+
 # Maps whose keys the user makes up: given in a workspace file they replace the default as a whole.
 _REPLACED = {"time.bands", "time.day_types", "tallies", "gates.entry_m", "gates.exit_m"}
 
@@ -270,12 +302,12 @@ def _known(model: type[BaseModel], at: tuple[Any, ...]) -> list[str]:
     return list(getattr(current, "model_fields", {}))
 
 
-def _tell(err: ValidationError, origin: str) -> ConfigError:
+def _tell(err: ValidationError, origin: str, model: type[BaseModel] = Settings) -> ConfigError:
     lines = []
     for fault in err.errors():
         key = ".".join(str(p) for p in fault["loc"])
         if fault["type"] == "extra_forbidden":
-            known = _known(Settings, fault["loc"][:-1])
+            known = _known(model, fault["loc"][:-1])
             near = difflib.get_close_matches(str(fault["loc"][-1]), known, 1, 0.3)
             mend = f"; did you mean {near[0]}?" if near else "; the keys stand in config/default.yaml"
             lines.append(f"{origin}: unknown key {key}{mend}")
@@ -308,3 +340,18 @@ def load_settings(path: Path | None = None, over: dict[str, Any] | None = None) 
         return Settings.model_validate(merged)
     except ValidationError as err:
         raise _tell(err, str(path) if path else "configuration") from err
+
+
+def load_demo(over: dict[str, Any] | None = None) -> Demo:
+    """Read the settings of the invented town, with overriding values.
+
+    Raises
+    ------
+    ConfigError
+        An unknown key or a value out of range.
+    """
+    merged = _merge(_read(share_path("config") / "demo.yaml"), over or {})
+    try:
+        return Demo.model_validate(merged)
+    except ValidationError as err:
+        raise _tell(err, "demo.yaml", Demo) from err

@@ -37,7 +37,7 @@ I32 = NDArray[np.int32]
 I64 = NDArray[np.int64]
 U8 = NDArray[np.uint8]
 
-KNOTS_AN_EDGE = 40  # first guess of knots for each edge driven
+KNOTS_AN_EDGE = 8  # first guess of knots for each edge driven
 
 
 @dataclass(frozen=True)

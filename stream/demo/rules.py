@@ -42,33 +42,10 @@ RING = (4.5, 3.2)  # entry to a roundabout; follow-up METHODS.md section 7, gap 
 ACROSS = {"primary": 520.0, "secondary": 420.0, "tertiary": 300.0, "motorway_link": 200.0}
 DEFAULT_KMH = {"unclassified": 50.0}
 # strength of the other traffic by hour of the local clock
-LEVEL = np.array(  # fmt: skip
-    (
-        0.1,
-        0.05,
-        0.05,
-        0.05,
-        0.1,
-        0.3,
-        0.7,
-        1.0,
-        0.95,
-        0.7,
-        0.6,
-        0.6,
-        0.65,
-        0.65,
-        0.7,
-        0.85,
-        1.0,
-        0.95,
-        0.75,
-        0.55,
-        0.4,
-        0.3,
-        0.25,
-        0.15,
-    )
+LEVEL = np.interp(
+    np.arange(24) + 0.5,
+    [0, 4, 6, 7.5, 9, 11, 15, 16.5, 18, 24],
+    [0.1, 0.05, 0.4, 1, 0.7, 0.6, 0.7, 1, 0.8, 0.1],
 )
 
 
