@@ -17,15 +17,31 @@ def export(
     to: Annotated[Path, typer.Option(metavar="FILE", help="Where to write: .parquet or .csv.")],
 ) -> None:
     """Write a table to a file, its data dictionary beside it."""
-    from stream.export import write
+    from stream.export import export_table
     from stream.store import Store
 
     session: Session = ctx.obj
     settings = session.settings()
     with Store.open(session.store, read_only=True, memory_mb=settings.run.memory_mb) as store:
-        n_rows = write(store, what, to, settings)
-    whole = {"what": what, "file": str(to), "n_rows": n_rows}
-    session.result(whole, f"{to}: {n_rows:,} rows of {what}")
+        written = export_table(store, what, to, settings)
+    held = written.withheld
+    whole = {
+        "what": what,
+        "file": str(to),
+        "dictionary": str(written.dictionary),
+        "n_rows": written.n_rows,
+        "withheld_strata": held.n_strata,
+        "withheld_passages": held.n_rows,
+    }
+    told = f"{to}: {written.n_rows:,} rows of {what}, described in {written.dictionary.name}"
+    if held.n_strata:
+        least = settings.privacy
+        told += (
+            f"\n  held back: {held.n_rows:,} passages or sections in {held.n_strata:,} strata of fewer than "
+            f"{least.min_passages} passages or {least.min_vehicles} vehicles (privacy.min_passages, "
+            "privacy.min_vehicles)"
+        )
+    session.result(whole, told)
 
 
 def report(

@@ -60,14 +60,11 @@ def ingest(
 
 
 def _is_compiled() -> bool:
-    """Tell whether the pass over the pings has been compiled here since its source last changed."""
+    """Tell whether compiled code of the pass over the pings is on disk for its present source."""
     from stream.detect import fused
 
-    stats: Any = getattr(fused.pass_kernel, "stats", None)
-    if stats is None:  # compiling is switched off
-        return True
-    kept = Path(stats.cache_path).glob("fused.pass_kernel-*.nbi")
-    return any(path.stat().st_mtime >= Path(fused.__file__).stat().st_mtime for path in kept)
+    cache: Any = getattr(fused.pass_kernel, "_cache", None)
+    return cache is None or bool(cache._cache_file._load_index())  # None: compiling is switched off
 
 
 def _told(one: dict[str, Any]) -> str:

@@ -11,6 +11,7 @@ if TYPE_CHECKING:
     from stream.store import Store
 
 _SHOWN = (5, 15, 50, 85, 95)
+_ENDS = ("", "lower_", "upper_")
 
 
 def _open(session: Session) -> "Store":
@@ -109,7 +110,31 @@ def quantiles(
     with _open(session) as store:
         rows = quantile_rows(store, tally, kept, only, settings)
     whole = {"store": str(session.store), "tally": tally, "by": kept, "where": only, "rows": rows}
-    session.result(whole, str(rows))
+    least = (settings.privacy.min_passages, settings.privacy.min_vehicles)
+    session.result(whole, _quantiles_told(rows, least) if rows else f"tally {tally} holds nothing of that")
+
+
+def _quantiles_told(rows: list[dict[str, Any]], least: tuple[int, int]) -> str:
+    unit = next(key for key in rows[0] if key.startswith("mean_")).removeprefix("mean_")
+    dimensions = list(rows[0])[: list(rows[0]).index("n")]
+    heads = [*dimensions, "n", "vehicles", "mean", *(f"P{level}" for level in _SHOWN), ""]
+    cells = []
+    for row in rows:
+        ladder = [_with_limits(*(row[f"p{level}_{end}{unit}"] for end in _ENDS)) for level in _SHOWN]
+        counted = [f"{row['n']:,}", f"{row['vehicles']:,}", f"{row[f'mean_{unit}']:.1f}"]
+        named = [row[name] or "-" for name in dimensions]
+        cells.append([*named, *counted, *ladder, "thin" if row["is_thin"] else ""])
+    what = "delay in s" if unit == "s" else "pace in s per km"
+    lines = [f"{what}; in brackets the 95 % limits", table(heads, cells, left=len(dimensions))]
+    if any(row["is_thin"] for row in rows):
+        lines.append(f"thin: fewer than {least[0]} passages or {least[1]} vehicles")
+    return "\n".join(lines)
+
+
+def _with_limits(value: float | None, low: float | None, high: float | None) -> str:
+    """Write a percentile with its limits; what is open is left out."""
+    shown = ["" if one is None else f"{one:.1f}" for one in (value, low, high)]
+    return f"{shown[0] or 'open'} ({shown[1]}..{shown[2]})"
 
 
 def _conditions(pairs: list[str]) -> dict[str, str]:
