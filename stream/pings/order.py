@@ -8,7 +8,6 @@ import queue
 import tempfile
 import threading
 from collections.abc import Iterator
-from dataclasses import replace
 from pathlib import Path
 
 import duckdb
@@ -131,14 +130,19 @@ class _Feed:
                     return
                 n = len(part)
                 self.bytes_total = 2 * part.bytes_total
-                bare = part.cut(0, 0, part.n_rows_in - n, part.dropped)
-                self.news.put(replace(bare, bytes_total=self.bytes_total))
+                self.news.put(_bare(part, self.bytes_total))
                 row_ix = np.arange(self.n_rows, self.n_rows + n)
                 columns = [part.vehicle_ix, part.t_us, part.lon, part.lat, row_ix]
                 self.n_rows += n
                 yield pa.RecordBatch.from_arrays([pa.array(c) for c in columns], schema=_SCHEMA)
         except Exception as err:  # raised again by news(), in the thread that asked
             self.fault = err
+
+
+def _bare(part: PingChunk, bytes_total: int) -> PingChunk:
+    """Keep of a part its drops and its progress."""
+    none = (np.zeros(0, np.int32), np.zeros(0, np.int64), np.zeros(0), np.zeros(0))
+    return PingChunk(*none, part.n_rows_in - len(part), part.dropped, part.bytes_done, bytes_total)
 
 
 def sort_pings(

@@ -84,7 +84,9 @@ class PingSource:
                 done = before + min(raw.bytes_done, size)
                 part = columns.read(raw, done, self.bytes_total)
                 n_rows += part.n_rows_in
+                del raw
                 yield part
+                del part
             columns.close()
             before += size
         if n_rows == 0:

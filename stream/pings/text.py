@@ -23,22 +23,26 @@ from stream.pings.rows import NEEDED, RawRows, find_columns
 _SEPARATORS = (",", ";", "\t", "|")
 _LOOK_BYTES = 64 << 10
 _LOOK_LINES = 100
+_MARK = b"\xef\xbb\xbf"
 
 
-def _head(path: Path) -> list[str]:
-    """Read the first lines that aren't blank."""
+def _head(path: Path) -> list[bytes]:
+    """Read the first lines that aren't blank, without the byte order mark."""
     for block in ByteSource(path).lines(_LOOK_BYTES):
-        try:
-            text = block.decode("utf-8-sig")
-        except UnicodeDecodeError as err:
-            raise InputError(
-                f"{path.name}: is not UTF-8 text (byte {err.start}); is it packed or of another format? "
-                f"rename the file or set source.format"
-            ) from err
-        lines = [line for line in text.splitlines() if line.strip()]
+        lines = [line for line in block.removeprefix(_MARK).splitlines() if line.strip()]
         if lines:
             return lines[:_LOOK_LINES]
     raise InputError(f"{path.name}: holds no line of text; deliver it again or leave it out")
+
+
+def _header(path: Path) -> str:
+    try:
+        return _head(path)[0].decode("utf-8")
+    except UnicodeDecodeError as err:
+        raise InputError(
+            f"{path.name}: its header is not UTF-8 text (byte {err.start}); is the file packed or of another "
+            f"format? rename it or set source.format"
+        ) from err
 
 
 class CsvReader:
@@ -49,7 +53,7 @@ class CsvReader:
     def __init__(self, path: Path, wanted: dict[str, str], threads: bool) -> None:
         self.path = path
         self._threads = threads
-        header = _head(path)[0]
+        header = _header(path)
         heads = {s: [n.strip() for n in next(csv.reader([header], delimiter=s))] for s in _SEPARATORS}
         names = set(wanted.values())
         self._separator = max(_SEPARATORS, key=lambda s: (len(names & set(heads[s])), len(heads[s])))
@@ -125,7 +129,7 @@ def _after_header(block: bytes) -> bytes:
     at = 0
     while at < len(block):
         end = block.find(b"\n", at) + 1 or len(block)
-        if block[at:end].strip(b"\xef\xbb\xbf \t\r\n"):
+        if block[at:end].strip(_MARK + b" \t\r\n"):
             return block[end:]
         at = end
     return block
@@ -143,14 +147,13 @@ class NdjsonReader:
         for i, line in enumerate(_head(path)):
             try:
                 one = json.loads(line)
-            except json.JSONDecodeError:
+            except ValueError:
                 one = None
             if isinstance(one, dict):
                 have.update(dict.fromkeys(one))
             elif i == 0:
-                raise InputError(
-                    f"{path.name} row 1: is no JSON object ({line[:40]!r}); write one object a line"
-                )
+                start = line[:40].decode(errors="replace")
+                raise InputError(f"{path.name} row 1: is no JSON object ({start!r}); write one object a line")
         find_columns(path, list(have), wanted)
 
     def rows(self) -> Iterator[RawRows]:
@@ -158,7 +161,7 @@ class NdjsonReader:
         source = ByteSource(self.path)
         row = 1
         for given in source.lines():
-            block = given.removeprefix(b"\xef\xbb\xbf") if row == 1 else given
+            block = given.removeprefix(_MARK) if row == 1 else given
             frame, n_broken = self._parse(block)
             table = frame.to_arrow(compat_level=pl.CompatLevel.oldest())
             vehicle, time, lon, lat = (table.column(name) for name in self._names)
