@@ -69,8 +69,8 @@ def functions_of(path: Path) -> Iterator[ast.FunctionDef | ast.AsyncFunctionDef]
 
 
 def is_kernel(function: ast.FunctionDef | ast.AsyncFunctionDef) -> bool:
-    """Tell a compiled kernel by its decorator."""
-    return any(isinstance(d, ast.Name) and d.id == "kernel" for d in function.decorator_list)
+    """Tell a compiled kernel, or a part of one, by its decorator."""
+    return any(isinstance(d, ast.Name) and d.id in ("kernel", "spliced") for d in function.decorator_list)
 
 
 def told(path: Path) -> str:
@@ -152,7 +152,8 @@ def test_only_cli_prints() -> None:
 def test_no_module_hides_the_standard_library() -> None:
     """`stream` is a plain word, so its parts carry no name of the standard library."""
     parts = {part for name in MODULES for part in name.split(".")[1:]}
-    assert parts & set(sys.stdlib_module_names) == set()
+    gone = {"chunk"}  # left the library with Python 3.13 (PEP 594)
+    assert parts & set(sys.stdlib_module_names) - gone == set()
 
 
 @pytest.mark.parametrize("path", FILES, ids=told)

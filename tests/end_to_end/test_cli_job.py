@@ -109,7 +109,7 @@ def test_quantiles_by_maneuver_are_those_worked_out(job: Path) -> None:
         "right": N_VEHICLES // 2,
     }
     for name, row in rows.items():
-        assert row["mean_s"] == pytest.approx(DELAY_S[name], abs=0.125)
+        assert row["mean_s"] == pytest.approx(DELAY_S[name], abs=0.05)
         assert row["p50_s"] == pytest.approx(DELAY_S[name], abs=0.25)
 
 
