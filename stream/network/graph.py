@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from stream.geodesy import bearing_deg, offset_m, turn_deg
+from stream.geodesy import bearing_deg, metres_per_degree, offset_m, turn_deg
 from stream.kernel import kernel
 from stream.network import raw
 from stream.network.model import F32, F64, I8, I32, I64, NONE, U8
@@ -125,13 +125,13 @@ def place_kernel(
 def bearings_kernel(lon1: F64, lat1: F64, lon2: F64, lat2: F64, bearing_out: F64) -> None:
     """Write the bearings, in degrees, from points 1 to points 2 (degrees)."""
     for i in range(lon1.shape[0]):
-        east, north = offset_m(
-            round(lon1[i] * 1e7),
-            round(lat1[i] * 1e7),
-            round(lon2[i] * 1e7),
-            round(lat2[i] * 1e7),
-        )
-        bearing_out[i] = bearing_deg(east, north)
+        k_lon, k_lat = metres_per_degree(0.5 * (lat1[i] + lat2[i]))
+        d_lon = lon2[i] - lon1[i]
+        if d_lon >= 180.0:
+            d_lon -= 360.0
+        elif d_lon < -180.0:
+            d_lon += 360.0
+        bearing_out[i] = bearing_deg(d_lon * k_lon, (lat2[i] - lat1[i]) * k_lat)
 
 
 @kernel

@@ -128,7 +128,7 @@ def test_turn_angles_are_the_map_s(real: tuple[Built, Settings]) -> None:
     for edge in range(len(s.edge_open)):
         for k in range(s.succ_start[edge], s.succ_start[edge + 1]):
             expected = (bearing[s.succ_edge[k]] - bearing[edge ^ 1] - 180.0) % 360.0
-            assert (s.succ_turn_deg[k] - expected + 180.0) % 360.0 - 180.0 == pytest.approx(0.0, abs=0.1)
+            assert (s.succ_turn_deg[k] - expected + 180.0) % 360.0 - 180.0 == pytest.approx(0.0, abs=0.002)
 
 
 def along(points: np.ndarray, metres: float) -> tuple[float, float]:
@@ -220,7 +220,7 @@ def test_arms_lie_clockwise_by_their_bearings(real: tuple[Built, Settings]) -> N
             if s.node_id[s.road_from[roads[0]]] != row["mouth_node_id"]:
                 points = points[::-1]
             azimuth = GEOD.inv(*along(points, 5.0), *along(points, 30.0))[0]
-            assert (row["bearing_deg"] - azimuth + 180) % 360 - 180 == pytest.approx(0, abs=0.1)
+            assert (row["bearing_deg"] - azimuth + 180) % 360 - 180 == pytest.approx(0, abs=0.002)
             checked += 1
     assert checked > 100
     for arms in by_junction.values():
