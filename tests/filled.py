@@ -29,11 +29,8 @@ def found_at_random(built: Built, n: int, n_vehicles: int, seed: int) -> Found:
     passages["vehicle_ix"] = random.integers(0, n_vehicles, n)
     passages["arm_in_ix"] = movement["arm_in_ix"].to_numpy()[pick]
     passages["arm_out_ix"] = movement["arm_out_ix"].to_numpy()[pick]
-    passages["entry_us"] = (
-        START_US + random.permutation(SPAN_US // 1000)[:n] * 1000
-        if n < 1000
-        else (START_US + np.arange(n) * (SPAN_US // n))
-    )
+    slot_us = SPAN_US // max(n, 1)
+    passages["entry_us"] = START_US + np.arange(n) * slot_us + random.integers(0, slot_us, n)
     passages["trip_start_us"] = passages["entry_us"] - 60_000_000
     passages["exit_us"] = passages["entry_us"] + random.gamma(2.0, 9e6, n).astype(np.int64) + 7_000_000
     passages["inside_m"] = movement["inside_m"].to_numpy()[pick]

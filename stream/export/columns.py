@@ -34,7 +34,7 @@ def _gate_ends() -> dict[str, str]:
     for gate in ("entry", "exit"):
         for end, side in ((1, "left"), (2, "right")):
             for axis, long in (("lon", "longitude"), ("lat", "latitude")):
-                where = f"{side} end of the {gate} gate, seen towards the junction"
+                where = f"{side} end of the {gate} gate, as driven"
                 out[f"{gate}_{axis}{end}"] = f"{long} of the {where}, WGS 84; null without such a gate"
     return out
 

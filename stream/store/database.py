@@ -207,7 +207,7 @@ class Store:
         name: str,
         params: dict[str, Any] | None = None,
         incoming: pl.DataFrame | None = None,
-        batch_rows: int = 100_000,
+        batch_rows: int = 20_000,
     ) -> Iterator["pa.RecordBatch"]:
         """Run one SQL query and give its rows as Arrow batches, never all at once; at least one batch.
 
