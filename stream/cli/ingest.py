@@ -46,8 +46,8 @@ def ingest(
         note = f"{now.rows:,} rows  {rate:,.0f} rows/s  {now.passages:,} passages"
         bars.show(f"{now.batch} ({now.batch_ix + 1} of {now.n_batches})", now.done, now.total, note)
 
-    if files and not _is_compiled():
-        session.note("compiling the kernels, the first time only: some 30 seconds")
+    if files:
+        note_compiling(session)
     try:
         with Bars(session) as bars:
             reports = take_in(session.store, files or [], settings, batch, close, draw)
@@ -56,18 +56,20 @@ def ingest(
             warn(f"batches before {at[0].batch} are in ({at[0].batch_ix} of {at[0].n_batches})")
         raise
     whole = {"store": str(session.store), "batches": reports}
-    session.result(whole, "\n".join(_told(one) for one in reports))
+    session.result(whole, "\n".join(told(one) for one in reports))
 
 
-def _is_compiled() -> bool:
-    """Tell whether compiled code of the pass over the pings is on disk for its present source."""
+def note_compiling(session: Session) -> None:
+    """Say that the wait to come is compiling, unless compiled code of this version is on disk."""
     from stream.detect import fused
 
-    cache: Any = getattr(fused.pass_kernel, "_cache", None)
-    return cache is None or bool(cache._cache_file._load_index())  # None: compiling is switched off
+    cache: Any = getattr(fused.pass_kernel, "_cache", None)  # None: compiling is switched off
+    if cache is not None and not cache._cache_file._load_index():
+        session.note("compiling the kernels, the first time only: up to a minute")
 
 
-def _told(one: dict[str, Any]) -> str:
+def told(one: dict[str, Any]) -> str:
+    """Say in text what came of one batch."""
     if one["status"] == "already in":
         return f"{one['batch']}: already in since {one['since']:%Y-%m-%d %H:%M} UTC, nothing to do"
     if one["status"] == "nothing open":

@@ -7,7 +7,8 @@ from typing import Annotated, Any
 import typer
 
 from stream.cli.bars import Bars
-from stream.cli.say import Session
+from stream.cli.ingest import note_compiling, told
+from stream.cli.say import Session, table
 
 
 class Side(StrEnum):
@@ -29,10 +30,43 @@ def demo(
     from stream.showcase import run_demo
 
     session: Session = ctx.obj
+    note_compiling(session)
+    over = {"run": session.settings().run.model_dump()}
     with Bars(session) as bars:
-        whole = run_demo(into, days, drive_on.value, {}, bars.show)
+        whole = run_demo(into, days, drive_on.value, over, bars.show)
     session.result(whole, _told(whole))
 
 
 def _told(whole: dict[str, Any]) -> str:
-    return str(whole)
+    seconds = whole["seconds"]
+    stages = ", ".join(f"{stage} {s:.1f}" for stage, s in seconds.items() if stage != "whole")
+    heads = ("zone", "maneuver", "passages", "seen", "P50 true", "measured", "P85 true", "measured", "")
+    rows = [
+        [one["zone"] or "-", one["maneuver"], f"{one['n_true']:,}", f"{one['n_seen']:,}"]
+        + [_seconds(one[f"{q}_{side}_ms"]) for q in ("p50", "p85") for side in ("true", "seen")]
+        + ["" if one["is_close"] else "off"]
+        for one in whole["table"]
+    ]
+    met = whole["accuracy"]
+    lines = [
+        f"an invented town that drives on the {whole['drive_on']}: {whole['days']} days, "
+        f"{whole['pings']:,} pings, {met['n_true']:,} true passages, {seconds['whole']:.1f} s ({stages})",
+        "",
+        *(told(batch) for batch in whole["batches"]),
+        "",
+        "delay in s, measured beside true",
+        table(heads, rows, left=2),
+    ]
+    if not all(one["is_close"] for one in whole["table"]):
+        lines.append("off: farther from the truth than 0.5 s and 5 %")
+    lines += [
+        f"recall {met['recall']:.2%}, precision {met['precision']:.2%}, right arms {met['right_arms']:.2%}, "
+        f"bias of traversal {_seconds(met['bias_ms'], 3)} s",
+        "",
+        f"next: turntally quantiles --store {whole['paths']['store']}",
+    ]
+    return "\n".join(lines)
+
+
+def _seconds(ms: float | None, digits: int = 1) -> str:
+    return "-" if ms is None else f"{ms / 1000:.{digits}f}"
