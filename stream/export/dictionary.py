@@ -3,39 +3,14 @@
 Source: Table Schema (Frictionless standard), METHODS.md section 13; `unit` is a property of our own.
 """
 
-from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from stream.export.columns import column
 from stream.export.tables import Table, Withheld
-from stream.store import Store
+from stream.store.origin import ATTRIBUTION, LICENCE, Origin
 
 if TYPE_CHECKING:
     import pyarrow as pa
-
-ATTRIBUTION = "© OpenStreetMap contributors"
-_LICENCE = "Open Database License (ODbL) 1.0"
-
-
-@dataclass(frozen=True)
-class Origin:
-    """Where the figures come from.
-
-    Attributes
-    ----------
-    network_digest, reference_ids : the streets and the cruise speeds that delays rest on
-    is_osm : whether the streets come from OpenStreetMap
-    """
-
-    network_digest: str
-    reference_ids: tuple[int, ...]
-    is_osm: bool
-
-
-def origin_of(store: Store) -> Origin:
-    """Read where a store's figures come from; the store holds a network."""
-    told = store.rows("export/origin")[0]
-    return Origin(told["network_digest"], tuple(told["reference_ids"]), told["is_osm"])
 
 
 def _type_of(kind: "pa.DataType") -> str:
@@ -85,5 +60,5 @@ def dictionary(
         "reference_ids": list(origin.reference_ids),
     }
     if origin.is_osm:
-        out |= {"attribution": ATTRIBUTION, "licence": _LICENCE}
+        out |= {"attribution": ATTRIBUTION, "licence": LICENCE}
     return out

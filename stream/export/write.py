@@ -5,7 +5,6 @@ Guarantee: a file appears under its name only when it is whole; memory doesn't g
 
 import json
 from collections.abc import Iterator
-from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -13,11 +12,12 @@ from typing import TYPE_CHECKING, Any
 import polars as pl
 
 from stream.config import Settings
-from stream.errors import InputError
 from stream.export.columns import column
-from stream.export.dictionary import ATTRIBUTION, Origin, dictionary, origin_of
+from stream.export.dictionary import dictionary
 from stream.export.tables import Table, Withheld, find_table, rows_of
 from stream.store import Store
+from stream.store.origin import ATTRIBUTION, Origin, origin_of
+from stream.store.target import check_target, whole_file
 
 if TYPE_CHECKING:
     import pyarrow as pa
@@ -44,45 +44,6 @@ class Written:
 def dictionary_path(to: Path) -> Path:
     """Name the data dictionary of a file: the whole name, then `.schema.json`."""
     return to.with_name(to.name + ".schema.json")
-
-
-def check_target(to: Path, endings: tuple[str, ...]) -> None:
-    """Refuse a file that can't be written, before any work is done.
-
-    Raises
-    ------
-    InputError
-        Another ending, a folder of that name, or a folder that is missing.
-    """
-    if to.suffix.lower() not in endings:
-        raise InputError(
-            f"{to}: ending {to.suffix or 'missing'}; name a file that ends in {' or '.join(endings)}"
-        )
-    if to.is_dir():
-        raise InputError(f"{to}: is a folder; name a file with --to")
-    if not to.parent.is_dir():
-        raise InputError(f"{to}: the folder {to.parent} is missing; make it first")
-
-
-@contextmanager
-def whole_file(to: Path) -> Iterator[Path]:
-    """Give a temporary name beside `to`, and rename it when the block ends well; else remove it.
-
-    Raises
-    ------
-    InputError
-        The file can't be written: rights, a full disk.
-    """
-    part = to.with_name(f".{to.name}.part")
-    try:
-        yield part
-        part.replace(to)
-    except OSError as err:
-        raise InputError(
-            f"{to}: can't be written ({err.strerror or err}); make room or mend the rights"
-        ) from err
-    finally:
-        part.unlink(missing_ok=True)
 
 
 def write(store: Store, what: str, to: Path, settings: Settings) -> int:
