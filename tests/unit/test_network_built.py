@@ -89,9 +89,33 @@ def test_zone_names_side_and_time_zone_reach_the_junctions(tmp_path: Path) -> No
     built = build_network(sketch.write(tmp_path), zones, load_settings())
     rows = built.tables["junction"].select("junction_id", "zone", "driving_side", "time_zone").rows()
     assert rows == [(1, "west", "left", "Europe/London"), (2, "", "right", "Europe/Helsinki")]
+    assert built.report["zones"] == {"west": 1, "outside": 1}
+    assert built.report["driving_side"] == {"left": 1, "right": 1}
     assert built.tables["zone"].rows() == [(0, "west", "Europe/London", "left")]
     zone_of = dict(built.tables["link"].select("class", "zone").unique().filter(pl.col("zone") != "").rows())
     assert set(zone_of.values()) == {"west"}
+
+
+def test_road_lines_give_the_same_network_as_osm(tmp_path: Path) -> None:
+    """The same crossing from GeoJSON lines: one junction, four arms with the same gates, all movements."""
+    sketch = cross()
+    features = [
+        {
+            "type": "Feature",
+            "properties": {"class": "residential"},
+            "geometry": {"type": "LineString", "coordinates": [sketch.place[1], sketch.place[end]]},
+        }
+        for end in (2, 3, 4, 5)
+    ]
+    path = tmp_path / "roads.geojson"
+    path.write_text(json.dumps({"type": "FeatureCollection", "features": features}))
+    lines, osm = build_network(path, None, load_settings()).tables, sketch.build(tmp_path).tables
+    for name, columns in (
+        ("junction", ["n_arms", "kind", "control", "class"]),
+        ("arm", ["arm", "entry_gate_m", "exit_gate_m", "limit_kmh", "is_inbound", "is_outbound"]),
+        ("movement", ["arm_in", "arm_out", "maneuver", "is_banned"]),
+    ):
+        assert lines[name].select(columns).equals(osm[name].select(columns)), name
 
 
 def test_configured_time_zone_holds_outside_zones(tmp_path: Path) -> None:
