@@ -1,7 +1,7 @@
 """The archive, read in chunks of typed columns."""
 
 from stream.pings.book import VehicleBook
-from stream.pings.chunk import PingChunk
+from stream.pings.chunks import PingChunk
 from stream.pings.files import content_digest, expand
 from stream.pings.hold import HoldBack
 from stream.pings.read import PingSource, open_source

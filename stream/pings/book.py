@@ -88,6 +88,8 @@ class Encoder:
         self._values: pa.Array | None = None
         self._names: list[str] = []
         self._lookup: Codes = np.zeros(0, dtype=np.int32)
+        self._same: Codes | None = None
+        self._n_known = 0
 
     def encode(self, value_ix: Codes, values: pa.Array) -> Codes:
         """Encode rows.
@@ -104,12 +106,26 @@ class Encoder:
         int32[n], codes of the book.
         """
         if self._values is None or not values.equals(self._values):
-            self._values = values
-            self._names = [v if isinstance(v, str) else str(v) for v in values.to_pylist()]
+            self._take(values)
+        elif len(self._book) != self._n_known:
             self._lookup = self._book.lookup(self._names)
+        if self._same is not None:
+            value_ix = self._same[value_ix]
         codes = np.empty(len(value_ix), dtype=np.int32)
         first = np.empty(len(self._names), dtype=np.int32)
         n_new = recode_kernel(value_ix, len(self._book), self._lookup, codes, first)
         for at in first[:n_new].tolist():
             self._book.code(self._names[at])
+        self._n_known = len(self._book)
         return codes
+
+    def _take(self, values: pa.Array) -> None:
+        """Look up a new list; where it holds a value twice, both stand for the first."""
+        self._values = values
+        self._names = [v if isinstance(v, str) else str(v) for v in values.to_pylist()]
+        self._lookup = self._book.lookup(self._names)
+        self._same = None
+        if len(set(self._names)) < len(self._names):
+            first: dict[str, int] = {}
+            same = [first.setdefault(name, i) for i, name in enumerate(self._names)]
+            self._same = np.array(same, dtype=np.int32)

@@ -26,8 +26,6 @@ def plain(column: pa.Array | pa.ChunkedArray) -> pa.Array:
     """Join the pieces of a column and give texts one type; dictionaries of texts and numbers are resolved."""
     if isinstance(column, pa.ChunkedArray):
         column = column.combine_chunks()
-        if isinstance(column, pa.ChunkedArray):
-            column = pa.concat_arrays(column.chunks) if column.num_chunks else pa.array([], column.type)
     if pa.types.is_dictionary(column.type):
         column = column.dictionary_decode()
     if is_text(column.type) and not pa.types.is_string(column.type):
@@ -104,11 +102,10 @@ def read_vehicle(column: pa.Array | pa.ChunkedArray) -> tuple[NDArray[np.int32],
     WrongTypeError
         Neither text nor integers.
     """
-    if isinstance(column, pa.ChunkedArray):
-        column = column.unify_dictionaries() if pa.types.is_dictionary(column.type) else column
-        column = plain(column) if not pa.types.is_dictionary(column.type) else column.combine_chunks()
-        if isinstance(column, pa.ChunkedArray):
-            column = column.chunk(0) if column.num_chunks else pa.array([], column.type)
+    if not pa.types.is_dictionary(column.type):
+        column = plain(column)
+    elif isinstance(column, pa.ChunkedArray):
+        column = column.unify_dictionaries().combine_chunks()
     kind = column.type.value_type if pa.types.is_dictionary(column.type) else column.type
     if pa.types.is_null(kind):
         return np.zeros(len(column), np.int32), pa.array([""]), np.zeros(len(column), np.bool_)

@@ -19,7 +19,7 @@ from stream.config import Run, share_path
 from stream.errors import InputError
 from stream.kernel import kernel
 from stream.pings.book import Encoder, VehicleBook
-from stream.pings.chunk import PingChunk, rechunk
+from stream.pings.chunks import PingChunk, rechunk
 
 _SCHEMA = pa.schema(
     [
@@ -214,10 +214,20 @@ class _Sorting:
         if self._feed.fault is not None:
             raise self._feed.fault
         if self._fault is not None:
-            raise InputError(
-                f"the pings could not be sorted ({self._fault}); free disk space for temporary files, "
-                f"or raise run.memory_mb"
-            ) from self._fault
+            raise _unsortable(self._fault) from self._fault
+
+
+def _batches(reader: pa.RecordBatchReader | None) -> Iterator[pa.RecordBatch]:
+    try:
+        yield from reader or ()
+    except (OSError, pa.ArrowException, duckdb.Error) as err:
+        raise _unsortable(err) from err
+
+
+def _unsortable(err: Exception) -> InputError:
+    return InputError(
+        f"the pings could not be sorted ({err}); free disk space for temporary files, or raise run.memory_mb"
+    )
 
 
 def _give(
@@ -227,7 +237,7 @@ def _give(
     encoder = Encoder(book)
     names = pa.array(local.names, pa.string())
     given = 0
-    for batch in reader or ():
+    for batch in _batches(reader):
         vehicle_ix, t_us, lon, lat = (column.to_numpy() for column in batch.columns)
         codes = encoder.encode(np.array(vehicle_ix), names)
         given += len(codes)

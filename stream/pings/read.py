@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from stream.config import Settings
 from stream.errors import ConfigError, InputError
 from stream.pings.book import Encoder, VehicleBook
-from stream.pings.chunk import PingChunk, rechunk
+from stream.pings.chunks import PingChunk, rechunk
 from stream.pings.columns import Account, plain, read_coordinate, read_vehicle
 from stream.pings.files import format_of, size_of
 from stream.pings.gpx import GpxReader

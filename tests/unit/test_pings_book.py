@@ -53,6 +53,24 @@ def test_encode_sees_what_others_wrote_into_the_book() -> None:
     assert encode(Encoder(book), [0], pa.array(["b"])) == [1]
 
 
+def test_encode_goes_on_after_others_wrote_into_the_book() -> None:
+    """What was looked up before another encoder gave codes is looked up again."""
+    book = VehicleBook()
+    one, two = Encoder(book), Encoder(book)
+    values = pa.array(["a", "b"])
+    encode(one, [0], values)
+    encode(two, [1], values)
+    assert encode(one, [1, 0], values) == [1, 0]
+    assert book.names == ["a", "b"]
+
+
+def test_encode_takes_a_value_that_stands_twice_for_one() -> None:
+    """A dictionary with a value in two places gives one code."""
+    book = VehicleBook()
+    assert encode(Encoder(book), [2, 1, 0, 2], pa.array(["a", "b", "a"])) == [0, 1, 0, 0]
+    assert book.names == ["a", "b"]
+
+
 def test_encode_writes_whole_numbers_as_text() -> None:
     """Number ids stand in the book as their digits."""
     book = VehicleBook()
