@@ -69,7 +69,7 @@ def _result_keys(settings: Settings) -> dict[str, Any]:
 def network_config(settings: Settings) -> str:
     """Give the keys that shape a network as JSON, for `put_network`."""
     kept = {name: value for name, value in _result_keys(settings).items() if name in _NETWORK_PARTS}
-    return json.dumps(kept, sort_keys=True)
+    return json.dumps(kept)
 
 
 def _flat(value: Any, at: str = "") -> dict[str, Any]:
@@ -127,5 +127,5 @@ def pin_config(store: Store, settings: Settings, key_id: str) -> None:
     """Write down, within the first batch, what all later ones are held to."""
     held = store.meta()
     if "config" not in held:
-        store.put_meta("config", json.dumps(_result_keys(settings), sort_keys=True))
+        store.put_meta("config", json.dumps(_result_keys(settings)))
         store.put_meta("key_id", key_id)
