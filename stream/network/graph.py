@@ -86,7 +86,7 @@ def chainage_kernel(start: I32, lon_e7: I32, lat_e7: I32, at_out: F64) -> None:
         at = 0.0
         for p in range(start[r], start[r + 1]):
             if p > start[r]:
-                dx, dy = offset_m(lon_e7[p - 1], lat_e7[p - 1], lon_e7[p], lat_e7[p])
+                dx, dy = offset_m(int(lon_e7[p - 1]), int(lat_e7[p - 1]), int(lon_e7[p]), int(lat_e7[p]))
                 at += math.sqrt(dx * dx + dy * dy)
             at_out[p] = at
 
