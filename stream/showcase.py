@@ -8,10 +8,11 @@ from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
 import polars as pl
 
 from stream.config import Demo, Settings, load_demo, load_settings
-from stream.demo.compare import accuracy, compare
+from stream.demo.compare import accuracy, between_pings, compare
 from stream.demo.drive import drive
 from stream.demo.fleet import Fleet, day_trips
 from stream.demo.plan import Plan, write_osm, write_zones
@@ -19,7 +20,7 @@ from stream.demo.roads import Roads
 from stream.demo.rules import LEVEL, town_roads
 from stream.demo.town import TIME_ZONE, UTC_OFFSET_S, build_plan
 from stream.demo.truth import true_passages
-from stream.demo.write import Receivers, vehicle_intervals, write_day
+from stream.demo.write import Receivers, receive, vehicle_intervals, write_pings
 from stream.errors import InputError
 from stream.ingest import ingest
 from stream.network import Built, build_network
@@ -100,28 +101,55 @@ def _build(plan: Plan, paths: _Paths, settings: Settings) -> Built:
     return built
 
 
-def _receivers(demo: Demo) -> Receivers:
-    return Receivers(dict(demo.intervals), demo.noise.sigma_m, demo.noise.tau_s, demo.faults.model_dump())
+@dataclass(frozen=True)
+class _Traffic:
+    """What all days share."""
+
+    roads: Roads
+    fleet: Fleet
+    receivers: Receivers
+    interval_s: np.ndarray[tuple[int], np.dtype[np.float64]]
+
+
+def _traffic(plan: Plan, demo: Demo) -> _Traffic:
+    receivers = Receivers(
+        dict(demo.intervals), demo.noise.sigma_m, demo.noise.tau_s, demo.faults.model_dump()
+    )
+    return _Traffic(
+        town_roads(plan),
+        Fleet(demo.vehicles, demo.trips_a_day, demo.reach_s, demo.park_share, demo.park_s),
+        receivers,
+        vehicle_intervals(receivers, demo.vehicles, demo.seed),
+    )
+
+
+def _drive_day(
+    traffic: _Traffic, built: Built, demo: Demo, day: int, path: Path, clock: _Clock
+) -> tuple[pl.DataFrame, int, dict[str, int]]:
+    """Drive one day and write its pings; returns its true passages, rows written, and faults put in."""
+    local = datetime.combine(demo.first_day, datetime.min.time(), UTC) + timedelta(days=day)
+    midnight_us = (round(local.timestamp()) - UTC_OFFSET_S) * 1_000_000
+    seed = demo.seed + 1000 * (day + 1)
+    trips = day_trips(traffic.roads, traffic.fleet, LEVEL, midnight_us, seed)
+    tracks = drive(traffic.roads, trips, LEVEL, seed + 1)
+    clock.stop("drive")
+    pings, faults = receive(tracks, traffic.receivers, traffic.interval_s, seed + 2)
+    write_pings(pings, path)
+    clock.stop("write pings")
+    true = true_passages(tracks, built.tables["arm"], built.tables["junction"], built.tables["movement"])
+    true = true.with_columns(between_pings(true, pings))
+    clock.stop("true passages")
+    return true, pings.height, faults
 
 
 def _drive_days(
-    roads: Roads, built: Built, demo: Demo, paths: _Paths, clock: _Clock, show: Show
+    traffic: _Traffic, built: Built, demo: Demo, paths: _Paths, clock: _Clock, show: Show
 ) -> dict[str, Any]:
     """Drive day by day; write pings, true passages, and how many faults were put in."""
-    fleet = Fleet(demo.vehicles, demo.trips_a_day, demo.reach_s, demo.park_share, demo.park_s)
-    receivers = _receivers(demo)
-    interval_s = vehicle_intervals(receivers, demo.vehicles, demo.seed)
-    tables, rows, faults, truths = built.tables, 0, dict.fromkeys(demo.faults.model_dump(), 0), []
+    rows, faults, truths = 0, dict.fromkeys(demo.faults.model_dump(), 0), []
     for day, path in enumerate(paths.pings):
-        local = datetime.combine(demo.first_day, datetime.min.time(), UTC) + timedelta(days=day)
-        midnight_us = (round(local.timestamp()) - UTC_OFFSET_S) * 1_000_000
-        seed = demo.seed + 1000 * (day + 1)
-        tracks = drive(roads, day_trips(roads, fleet, LEVEL, midnight_us, seed), LEVEL, seed + 1)
-        clock.stop("drive")
-        n, put = write_day(tracks, receivers, interval_s, seed + 2, path)
-        clock.stop("write pings")
-        truths.append(true_passages(tracks, tables["arm"], tables["junction"], tables["movement"]))
-        clock.stop("true passages")
+        true, n, put = _drive_day(traffic, built, demo, day, path, clock)
+        truths.append(true)
         rows += n
         faults = {kind: faults[kind] + put[kind] for kind in faults}
         show("driving", day + 1, demo.days, f"{rows:,} pings")
@@ -131,14 +159,14 @@ def _drive_days(
 
 
 def _measure(paths: _Paths, settings: Settings) -> tuple[pl.DataFrame, pl.DataFrame]:
-    """Read true and measured passages in one shape."""
+    """Read true passages (between the pings of their drives) and measured ones in one shape."""
     run = settings.run
     with Store.open(paths.store, read_only=True, memory_mb=run.memory_mb, threads=run.threads) as store:
         seen = store.frame("export/passages", {"min_passages": 0, "min_vehicles": 0})
     seen = seen.with_columns(
         entry_us=pl.col("entry_at").dt.epoch("us"), exit_us=pl.col("exit_at").dt.epoch("us")
     )
-    return pl.read_parquet(paths.truth), seen
+    return pl.read_parquet(paths.truth).filter("is_between_pings"), seen
 
 
 def run_demo(
@@ -187,7 +215,7 @@ def run_demo(
     plan = build_plan(drive_on == "left")
     built = _build(plan, paths, settings)
     clock.stop("network")
-    driven = _drive_days(town_roads(plan), built, demo, paths, clock, show)
+    driven = _drive_days(_traffic(plan, demo), built, demo, paths, clock, show)
 
     def tell(at: "Progress") -> None:
         show("taking in", at.batch_ix + at.done / max(at.total, 1), at.n_batches, f"{at.passages:,} passages")

@@ -7,6 +7,29 @@ import polars as pl
 NEAR_US = 60_000_000  # a seen passage belongs to the true one of its junction that it overlaps within this
 
 
+def between_pings(true: pl.DataFrame, pings: pl.DataFrame) -> pl.Series:
+    """Tell which true passages lie between the first and the last ping of their own drive.
+
+    Parameters
+    ----------
+    true : vehicle, entry_us, exit_us, trip_start_us, trip_end_us
+    pings : vehicle_id, ts
+    """
+    seen = pings.select(vehicle="vehicle_id", at_us=pl.col("ts").dt.epoch("us")).sort("at_us")
+    rows = true.with_row_index("row")
+    before = rows.sort("entry_us").join_asof(
+        seen, left_on="entry_us", right_on="at_us", by="vehicle", strategy="backward", check_sortedness=False
+    )
+    after = rows.sort("exit_us").join_asof(
+        seen, left_on="exit_us", right_on="at_us", by="vehicle", strategy="forward", check_sortedness=False
+    )
+    ok_before = before.sort("row").select(
+        ok=(pl.col("at_us") >= pl.col("trip_start_us")).fill_null(value=False)
+    )
+    ok_after = after.sort("row").select(ok=(pl.col("at_us") <= pl.col("trip_end_us")).fill_null(value=False))
+    return (ok_before["ok"] & ok_after["ok"]).alias("is_between_pings")
+
+
 def match(true: pl.DataFrame, seen: pl.DataFrame) -> pl.DataFrame:
     """Pair true and seen passages of one vehicle at one junction, nearest middles first.
 

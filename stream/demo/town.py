@@ -108,6 +108,8 @@ def _east(plan: Plan) -> None:
     plan.node("k1", 905.0, -400.0)
     plan.node("k2", 900.0, 520.0)
     plan.way(["k1", "a3", "b3", "k2"], "unclassified", None, name="Field Lane")
+    plan.banned["b1", "e1", "a1"] = "no_u_turn"
+    plan.banned["a4", "e9", "b4"] = "no_u_turn"
     plan.signals["a2"] = plan.signals["b2"] = "a2"
 
 
@@ -119,14 +121,14 @@ def _north(plan: Plan) -> None:
     plan.way(["p2", "p3"], "primary", 80, name="North Road")
     plan.way(["p3", "p4"], "primary", 80, name="North Road", bridge="yes", layer="1")
     plan.way(["p4", "p5"], "primary", 80, name="North Road")
-    plan.node("q1", -400.0, 520.0, highway="mini_roundabout")
+    plan.node("q1", -250.0, 520.0, highway="mini_roundabout")
     if plan.is_left:
         plan.tags["q1"]["direction"] = "clockwise"
     plan.way(["n1", "q1", "p1"], "tertiary", 50, name="Cross Lane")
     plan.node("h1", 310.0, 520.0)
     plan.way(["p1", "h1", "m1", "k2"], "tertiary", 50, name="Cross Lane")
-    plan.way(plan.bent(_key(1, 5), "q1", 30.0), "tertiary", 40)
-    plan.way(["q1", plan.node("q2", -405.0, 700.0)], "residential", 30)
+    plan.way(plan.bent(_key(1, 5), "q1", 9.0), "tertiary", 40)
+    plan.way(["q1", plan.node("q2", -240.0, 700.0)], "residential", 30)
     plan.node("h2", 310.0, 850.0)
     plan.way(
         ["n2", *plan.bent("n2", "p2", -35.0)[1:-1], "p2", "h2", "m2"], "unclassified", None, name="Upper Lane"

@@ -191,6 +191,8 @@ def _timed(tracks: Tracks, gates: pl.DataFrame) -> pl.DataFrame:
     return gates.with_columns(
         pl.Series("vehicle", names[tracks.vehicle_ix[trip]].tolist(), dtype=pl.String),
         pl.Series("stood_near_gate", stood),
+        pl.Series("trip_start_us", tracks.t_us[tracks.time_start[trip]]),
+        pl.Series("trip_end_us", tracks.t_us[tracks.time_start[trip + 1] - 1]),
         *(pl.Series(name, values) for name, values in columns.items()),
     )
 
@@ -208,7 +210,8 @@ def true_passages(
     -------
     One row a passage: vehicle, junction_id, arm_in, arm_out, maneuver, zone, entry_us, exit_us,
     traversal_ms, unimpeded_ms (gates over the arms' cruise speeds, inside at their mean pace, DESIGN
-    section 6), delay_ms, stood_near_gate (stood within 10 m of a gate); sorted by vehicle, then entry.
+    section 6), delay_ms, inside_m, stood_near_gate (within 10 m of a gate), trip_start_us, trip_end_us (of
+    the drive); sorted by vehicle, then entry.
     """
     found = _timed(tracks, _gates(tracks, arms, _visits(tracks, arms, junctions)))
     gate = arms.with_row_index("row").select(
@@ -251,4 +254,6 @@ def true_passages(
         "delay_ms",
         "inside_m",
         "stood_near_gate",
+        "trip_start_us",
+        "trip_end_us",
     ).sort("vehicle", "entry_us", "junction_id")

@@ -62,21 +62,19 @@ def add_faults(
     return pl.concat([spoilt, again]).sort("ts", "vehicle_id", maintain_order=True), counts
 
 
-def write_day(
-    tracks: Tracks,
-    receivers: Receivers,
-    interval_s: np.ndarray[tuple[int], np.dtype[np.float64]],
-    seed: int,
-    path: Path,
-) -> tuple[int, dict[str, int]]:
-    """Sample one day's tracks, spoil a few pings and write them to a Parquet file.
+def receive(
+    tracks: Tracks, receivers: Receivers, interval_s: np.ndarray[tuple[int], np.dtype[np.float64]], seed: int
+) -> tuple[pl.DataFrame, dict[str, int]]:
+    """Sample one day's tracks and spoil a few pings.
 
     Returns
     -------
-    Rows written, and the number of each fault among them.
+    The pings in order of time, coordinates to 1e-7 degree, and the number of each fault among them.
     """
     pings = sample(tracks, interval_s[tracks.vehicle_ix], receivers.sigma_m, receivers.tau_s, seed)
-    rounded = pings.with_columns(pl.col("lon", "lat").round(7))
-    spoilt, counts = add_faults(rounded, receivers.faults, seed + 1)
-    spoilt.write_parquet(path, compression="zstd", row_group_size=200_000)
-    return spoilt.height, counts
+    return add_faults(pings.with_columns(pl.col("lon", "lat").round(7)), receivers.faults, seed + 1)
+
+
+def write_pings(pings: pl.DataFrame, path: Path) -> None:
+    """Write pings to a Parquet file: vehicle_id, ts (us, UTC), lon, lat."""
+    pings.write_parquet(path, compression="zstd", row_group_size=200_000)
