@@ -26,7 +26,8 @@ from stream.pings.text import CsvReader, NdjsonReader
 from stream.pings.times import TimeReader, WrongTypeError
 
 Mask = NDArray[np.bool_]
-_BATCH_ROWS = (1 << 16, 1 << 20)
+# Rows read at once: few enough for the memory beside a sort, enough that a dictionary is looked up seldom.
+_LEAST_ROWS, _SORT_ROWS, _MOST_ROWS = 1 << 16, 1 << 18, 1 << 20
 
 
 class PingSource:
@@ -123,8 +124,8 @@ def _reader(path: Path, settings: Settings) -> Reader:
     wanted = wanted_names(settings.source.columns)
     threads = settings.run.threads != 1
     if kind == "parquet":
-        smallest, largest = _BATCH_ROWS
-        return ParquetReader(path, wanted, min(max(settings.run.chunk_rows, smallest), largest), threads)
+        most = _SORT_ROWS if settings.source.order == "unsorted" else _MOST_ROWS
+        return ParquetReader(path, wanted, min(max(settings.run.chunk_rows, _LEAST_ROWS), most), threads)
     if kind == "csv":
         return CsvReader(path, wanted, threads)
     return NdjsonReader(path, wanted)
