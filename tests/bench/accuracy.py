@@ -1,23 +1,33 @@
 """Accuracy of detection against drives whose passages are known: recall, precision, arms, times.
 
-Used by the documented command (`python -m tests.bench.accuracy`) and, in small, by the tests.
+Used by the documented command (`python -m tests.bench.accuracy --help`) and, in small, by the tests.
 """
 
+import argparse
+import sys
+import tempfile
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
 import polars as pl
 
-from stream.config import Settings
+from stream.config import Settings, load_demo, load_settings
+from stream.demo.drive import drive, drive_network
+from stream.demo.fleet import Fleet, day_trips
+from stream.demo.plan import write_osm, write_zones
+from stream.demo.rules import LEVEL, town_roads
+from stream.demo.town import TIME_ZONE, build_plan
 from stream.demo.track import Tracks, sample
 from stream.demo.truth import true_passages
 from stream.detect.carry import new_states
 from stream.detect.run import Detector
-from stream.network import Built
+from stream.network import Built, build_network
 
 INTERVALS_S = (1.0, 3.0, 5.0, 10.0, 15.0, 30.0)
 HELSINKI = Path(__file__).parent.parent / "data" / "helsinki.osm.pbf"
+MIDNIGHT_US = 1_780_268_400_000_000  # 2026-06-01T00:00 in the town, one hour ahead of UTC
 
 
 @dataclass(frozen=True)
@@ -191,3 +201,66 @@ def line(a: Accuracy) -> str:
     shares = "".join(f"{share:>10.2%}" for share in (a.recall, a.precision, a.right_arms))
     seconds = "".join(f"{s:>10.3f}" for s in (a.bias_s, a.mae_s, a.p50_shift_s, a.p85_shift_s))
     return f"{a.place:<10}{a.interval_s:>10g}{a.n_true:>10}{shares}{seconds}"
+
+
+def town(n_trips: int, seed: int, settings: Settings) -> tuple[Built, Tracks]:
+    """Build the demo's town and drive a day there as the demo does: signals, gaps, queues, parking.
+
+    Parameters
+    ----------
+    n_trips
+        About how many trips; the fleet is as large as that takes at the demo's trips a day.
+    """
+    demo, plan = load_demo(), build_plan(is_left=False)
+    with tempfile.TemporaryDirectory() as name:
+        extract, zones = Path(name) / "town.osm", Path(name) / "zones.geojson"
+        write_osm(plan, extract)
+        write_zones(plan, zones, TIME_ZONE)
+        built = build_network(extract, zones, settings)
+    n_vehicles = max(1, round(n_trips / demo.trips_a_day))
+    fleet = Fleet(n_vehicles, demo.trips_a_day, demo.reach_s, demo.park_share, demo.park_s)
+    roads = town_roads(plan)
+    return built, drive(roads, day_trips(roads, fleet, LEVEL, MIDNIGHT_US, seed), LEVEL, seed + 1)
+
+
+def helsinki(n_trips: int, seed: int, settings: Settings) -> tuple[Built, Tracks]:
+    """Build the real extract's network and drive random routes along it, with random stops at junctions."""
+    built = build_network(HELSINKI, None, settings)
+    return built, drive_network(built.streets, n_trips, seed)
+
+
+PLACES = {"town": town, "helsinki": helsinki}
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Print the table for the places and intervals asked for."""
+    ask = argparse.ArgumentParser(
+        prog="python -m tests.bench.accuracy",
+        description="Measure detection against drives with known passages: in the demo's town and along "
+        "the real extract in tests/data. Noise is first-order Gauss-Markov.",
+    )
+    ask.add_argument("--place", default=",".join(PLACES), help="places, comma between; default %(default)s")
+    ask.add_argument("--trips", type=int, default=1200, help="trips a place; default %(default)s")
+    steps = ",".join(f"{step:g}" for step in INTERVALS_S)
+    ask.add_argument("--interval", default=steps, help="s between pings; default %(default)s")
+    ask.add_argument("--sigma", type=float, default=4.0, help="noise per axis, m; default %(default)s")
+    ask.add_argument("--tau", type=float, default=40.0, help="its time constant, s; default %(default)s")
+    ask.add_argument(
+        "--seed", type=int, default=1, help="of drives; noise takes the next; default %(default)s"
+    )
+    given = ask.parse_args(arguments)
+    places = given.place.split(",")
+    if unknown := [name for name in places if name not in PLACES]:
+        ask.error(f"--place {unknown[0]}: there are {', '.join(PLACES)}")
+    settings = load_settings()
+    print(HEAD)
+    for name in places:
+        built, tracks = PLACES[name](given.trips, given.seed, settings)
+        for step in map(float, given.interval.split(",")):
+            got = measure(name, built, tracks, step, settings, given.seed + 1, given.sigma, given.tau)
+            print(line(got), flush=True)
+    return 0
+
+
+if __name__ == "__main__":
+    sys.exit(main())
