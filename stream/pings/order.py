@@ -166,16 +166,18 @@ def sort_pings(
     While reading: chunks without pings that bear the drops and the progress; then the pings, in chunks of
     run.chunk_rows. Bytes count twice: once read, once given.
     """
-    with tempfile.TemporaryDirectory(prefix="turntally-") as folder:
-        with duckdb.connect(":memory:", config=_limits(run, folder)) as connection:
-            feed = _Feed(parts)
-            work = _Sorting(connection, feed)
-            yield from work.news()
-            yield from rechunk(_give(work.reader, feed, local, book), run.chunk_rows)
+    with (
+        tempfile.TemporaryDirectory(prefix="turntally-") as folder,
+        duckdb.connect(":memory:", config=_limits(run, folder)) as connection,
+    ):
+        feed = _Feed(parts)
+        work = _Sorting(connection, feed)
+        yield from work.news()
+        yield from rechunk(_give(work.reader, feed, local, book), run.chunk_rows)
 
 
 def _limits(run: Run, folder: str) -> dict[str, str | bool | int | float | list[str]]:
-    """Bound the sort to a quarter of the memory: more made 30 M pings no faster, and the store wants its own."""
+    """Bound the sort to a quarter of the memory: more made it no faster, and the store has its own."""
     memory_mb = max(run.memory_mb // 4, _LEAST_MB)
     threads = min(run.threads or os.cpu_count() or 1, max(1, memory_mb // _THREAD_MB))
     return {"memory_limit": f"{memory_mb}MB", "temp_directory": folder, "threads": threads}
