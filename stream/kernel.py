@@ -38,6 +38,8 @@ def _sources() -> str:
 
 def _stamped(compiled: Any) -> Any:
     """Tie a kernel's file cache to all kernels' sources (numba looks at the kernel's own file alone)."""
+    if not hasattr(compiled, "_cache"):
+        return compiled  # compiling is switched off (NUMBA_DISABLE_JIT)
     file = compiled._cache._cache_file
     file._source_stamp = (file._source_stamp, _sources())
     return compiled

@@ -8,7 +8,7 @@ from stream.detect.passages import Out, enter, leave
 from stream.detect.search import Routes
 from stream.detect.step import Step, has_gate, kept_speed, lay_pieces, place_kept
 from stream.detect.times import LONG_S, cubic_share, drive_s, gate_error_s, long_share
-from stream.kernel import kernel
+from stream.kernel import kernel, spliced
 from stream.network.model import NONE
 from stream.network.routes import StreetIndex
 
@@ -44,18 +44,18 @@ def mean_speed(step: Step, a: int, b: int) -> float:
     return (step.at_m[b] - step.at_m[a]) / (dt_us * 1e-6) if dt_us > 0 else 0.0
 
 
-@kernel
-def speed_before(st: Any, first: int, step: Step, j: int) -> float:
+@spliced
+def speed_before(st: Any, first: int, index: StreetIndex, step: Step, j: int) -> float:
     """Give the speed before point j, a leave: from the point before the stay, -1 unknown."""
     if step.t_us[j] - step.t_us[j - 1] > STAND_US:
         return mean_speed(step, j - 1, j)
     if j >= 3:
         return mean_speed(step, j - 2, j - 1)
-    return kept_speed(st, first) if first > 0 else -1.0
+    return kept_speed(st, first, index) if first > 0 else -1.0
 
 
-@kernel
-def speed_after(st: Any, last: int, step: Step, j: int, m: int) -> float:
+@spliced
+def speed_after(st: Any, last: int, index: StreetIndex, step: Step, j: int, m: int) -> float:
     """Give the speed after point j, an arrival; -1 unknown."""
     if j + 2 < m:
         if step.t_us[j + 1] - step.t_us[j] > STAND_US:
@@ -63,10 +63,10 @@ def speed_after(st: Any, last: int, step: Step, j: int, m: int) -> float:
         return mean_speed(step, j + 1, j + 2)
     if st.leave_us[last] - st.arrive_us[last] > STAND_US:
         return 0.0
-    return kept_speed(st, last + 1) if last + 1 < st.n_kept else -1.0
+    return kept_speed(st, last + 1, index) if last + 1 < st.n_kept else -1.0
 
 
-@kernel
+@spliced
 def gate_time(
     st: Any,
     first: int,
@@ -96,8 +96,8 @@ def gate_time(
     drive = dt_s
     speed = slope
     if j & 1:  # a move; a stay is even
-        before = speed_before(st, first, step, j)
-        after = speed_after(st, last, step, j + 1, m)
+        before = speed_before(st, first, index, step, j)
+        after = speed_after(st, last, index, step, j + 1, m)
         if dt_s > LONG_S:
             drive = drive_s(index, step, n, step.at_m[j], step.at_m[j + 1], par.drive_share)
             share = long_share(
@@ -157,7 +157,7 @@ def advance(
     to, to_m : edge and chainage of the next one
     first, last : int    their kept pings
     """
-    chord_m = apart_m(st.kept_lon[first], st.kept_lat[first], st.kept_lon[last], st.kept_lat[last])
+    chord_m = apart_m(index, st.kept_lon[first], st.kept_lat[first], st.kept_lon[last], st.kept_lat[last])
     n = lay_pieces(st, at_m, to, to_m, chord_m, index, par, routes, step)
     total = step.start_m[n - 1] + step.to_m[n - 1] - step.from_m[n - 1]
     if has_gate(index, step, n):
@@ -179,9 +179,9 @@ def advance(
         dt_us = step.t_us[j + 1] - from_us
         step_ms = dt_us // 1000 if is_move else st.kept_step_ms[k]
         if is_move:
-            slow_m = apart_m(st.left_lon[k], st.left_lat[k], st.kept_lon[k + 1], st.kept_lat[k + 1])
+            slow_m = apart_m(index, st.left_lon[k], st.left_lat[k], st.kept_lon[k + 1], st.kept_lat[k + 1])
         else:
-            slow_m = apart_m(st.kept_lon[k], st.kept_lat[k], st.left_lon[k], st.left_lat[k])
+            slow_m = apart_m(index, st.kept_lon[k], st.kept_lat[k], st.left_lon[k], st.left_lat[k])
         is_slow = dt_us > 0 and slow_m < par.slow_mps * dt_us * 1e-6
         while cursor != NONE:
             gate_m = gate_place(index, step, cursor)

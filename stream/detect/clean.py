@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from stream.geodesy import offset_m
+from stream.geodesy import wrap_e7
 from stream.kernel import kernel
 from stream.network.cells import CELL_E7, HALF_LAT_E7, HALF_LON_E7, find_tile, tile_key
 from stream.network.model import F64, I32
@@ -80,9 +80,13 @@ def place_kernel(
 
 
 @kernel
-def apart_m(lon1: int, lat1: int, lon2: int, lat2: int) -> float:
-    """Give the distance of two points in metres (flat, for neighbours)."""
-    dx, dy = offset_m(lon1, lat1, lon2, lat2)
+def apart_m(index: StreetIndex, lon1: Any, lat1: Any, lon2: Any, lat2: Any) -> float:
+    """Give the distance of two points in metres, scaled at the first one's row of cells (flat)."""
+    row: Any = (np.int64(lat1) + HALF_LAT_E7) // CELL_E7 - index.row_first
+    row = min(max(row, 0), index.row_scale.shape[0] - 1)
+    d_lon: Any = np.int64(lon2) - lon1
+    dx = wrap_e7(d_lon) * index.row_scale[row, 0]
+    dy = (np.int64(lat2) - lat1) * index.row_scale[row, 1]
     return math.sqrt(dx * dx + dy * dy)
 
 
@@ -93,7 +97,7 @@ def is_reachable(distance_m: float, dt_us: int, max_speed_mps: float, slack_m: f
 
 
 @kernel
-def judge(st: Any, t_us: int, lon: int, lat: int, par: Any) -> int:
+def judge(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, par: Any) -> int:
     """Decide on a placed ping from the last good one and the held one; changes nothing.
 
     Returns
@@ -110,13 +114,17 @@ def judge(st: Any, t_us: int, lon: int, lat: int, par: Any) -> int:
         same_lat = st.held_lat if st.is_held else st.lat
         return DUPLICATE if lon == same_lon and lat == same_lat else SAME_TIME_ELSEWHERE
     from_last = is_reachable(
-        apart_m(st.lon, st.lat, lon, lat), t_us - st.t_us, par.max_speed_mps, par.jump_slack_m
+        apart_m(index, st.lon, st.lat, lon, lat), t_us - st.t_us, par.max_speed_mps, par.jump_slack_m
     )
     if not st.is_held:
         return GOOD if from_last else HOLD
     if from_last:
         return DROP_HELD
+    held_m = apart_m(index, st.held_lon, st.held_lat, lon, lat)
     from_held = is_reachable(
-        apart_m(st.held_lon, st.held_lat, lon, lat), t_us - st.held_us, par.max_speed_mps, par.jump_slack_m
+        held_m,
+        t_us - st.held_us,
+        par.max_speed_mps,
+        par.jump_slack_m,
     )
     return HELD_ELSEWHERE if from_held else REPLACE_HELD

@@ -6,16 +6,16 @@ Source: Newson & Krumm 2009, Hidden Markov map matching through noise and sparse
 exponential |route - chord|); online Viterbi: commit where all surviving paths share a state.
 """
 
-from typing import Any, NamedTuple
+from typing import Any
 
-import numpy as np
-
-from stream.detect.candidates import MAX_ROADS, Places, find_places_kernel
+from stream.detect.candidates import Places, find_places_kernel
 from stream.detect.carry import MAX_SURVIVORS
 from stream.detect.clean import apart_m
+from stream.detect.room import Column
 from stream.detect.search import SHORT_M, Routes, find_route, row_kernel
-from stream.kernel import kernel
-from stream.network.model import F64, I32, NONE
+from stream.detect.walk import NEAR_M, NEAR_US, walk_kernel
+from stream.kernel import kernel, spliced
+from stream.network.model import I32, NONE
 from stream.network.routes import StreetIndex
 
 # How one position follows another.
@@ -25,22 +25,6 @@ NO_COST = 1e18
 
 # What `extend` says.
 ADDED, NOWHERE, UNREACHABLE = 0, 1, 2
-
-
-class Column(NamedTuple):
-    """Room for the candidates of a new column."""
-
-    edge: I32  # [2 * MAX_ROADS]
-    back: I32
-    at_m: F64
-    cost: F64
-    best: F64
-
-
-def new_column() -> Column:
-    """Make room for the candidates of a new column."""
-    n = 2 * MAX_ROADS
-    return Column(np.zeros(n, np.int32), np.zeros(n, np.int32), np.zeros(n), np.zeros(n), np.zeros(n))
 
 
 @kernel
@@ -93,7 +77,7 @@ def transition(
     return cost, kind
 
 
-@kernel
+@spliced
 def list_candidates(index: StreetIndex, places: Places, n: int, par: Any, column: Column) -> int:
     """Spread places on roads into open directions, priced by their offset; give their count."""
     m = 0
@@ -113,7 +97,7 @@ def list_candidates(index: StreetIndex, places: Places, n: int, par: Any, column
     return m
 
 
-@kernel
+@spliced
 def connect(
     st: Any, index: StreetIndex, par: Any, routes: Routes, column: Column, n: int, chord_m: float
 ) -> bool:
@@ -144,7 +128,7 @@ def connect(
     return any_way
 
 
-@kernel
+@spliced
 def keep_best(st: Any, par: Any, column: Column, n: int, kept: int) -> None:
     """Write the best candidates as the newest column: those within `prune` of the best, few at most."""
     least = NO_COST
@@ -180,17 +164,25 @@ def extend(
     -------
     said : int    ADDED, NOWHERE (no street within reach) or UNREACHABLE (none that can be reached)
     """
+    chord_m = 0.0
+    if st.n_columns > 0:
+        before = st.column_kept[st.n_columns - 1]
+        chord_m = apart_m(
+            index, st.kept_lon[before], st.kept_lat[before], st.kept_lon[kept], st.kept_lat[kept]
+        )
+        if chord_m <= NEAR_M and st.arrive_us[kept] - st.leave_us[before] <= NEAR_US:
+            n = walk_kernel(st, st.kept_lon[kept], st.kept_lat[kept], chord_m, index, par, column)
+            if n > 0:
+                keep_best(st, par, column, n, kept)
+                return ADDED
     n_places = find_places_kernel(index, st.kept_lon[kept], st.kept_lat[kept], par.radius_m, places)
     if n_places == 0:
         return NOWHERE
     n = list_candidates(index, places, n_places, par, column)
     if n == 0:
         return NOWHERE
-    if st.n_columns > 0:
-        before = st.column_kept[st.n_columns - 1]
-        chord_m = apart_m(st.kept_lon[before], st.kept_lat[before], st.kept_lon[kept], st.kept_lat[kept])
-        if not connect(st, index, par, routes, column, n, chord_m):
-            return UNREACHABLE
+    if st.n_columns > 0 and not connect(st, index, par, routes, column, n, chord_m):
+        return UNREACHABLE
     keep_best(st, par, column, n, kept)
     return ADDED
 

@@ -42,7 +42,7 @@ CLOSE = -2  # in place of a reason to drop: no ping, the end of all that is open
 RESERVE = 4096  # rows of output that one ping can't exceed
 
 
-@kernel
+@spliced
 def judge_trip(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, par: Any) -> int:
     """Decide whether a good ping ends the open trip.
 
@@ -54,7 +54,7 @@ def judge_trip(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, par: 
         return NONE
     if t_us - st.t_us > par.max_gap_us:
         return END_GAP
-    if end_stay(st, t_us, lon, lat, par.dwell_radius_m):
+    if end_stay(st, t_us, lon, lat, index, par.dwell_radius_m):
         return NONE
     stayed_us = t_us - st.stay_us
     if stayed_us < par.dwell_us:
@@ -91,7 +91,7 @@ def take(
         st.mode = IDLE
     if ending != END_CLOSE:
         out.n[N_USED] += 1
-        if st.mode == PARKED and apart_m(st.stay_lon, st.stay_lat, lon, lat) > par.dwell_radius_m:
+        if st.mode == PARKED and apart_m(index, st.stay_lon, st.stay_lat, lon, lat) > par.dwell_radius_m:
             st.mode = IDLE
         if st.mode == IDLE:
             begin_trip(st, t_us, lon, lat)
@@ -99,7 +99,7 @@ def take(
             st.n_pings += 1
             if is_full(st):
                 make_room(st, vehicle, index, par, work, out)
-            if keep_ping(st, t_us, lon, lat, par.keep_m) and is_anchor(st, par.anchor_m):
+            if keep_ping(st, t_us, lon, lat, index, par.keep_m) and is_anchor(st, index, par.anchor_m):
                 anchor_at(st, vehicle, st.n_kept - 1, index, par, work, out)
         st.t_us = t_us
         st.lon = lon
@@ -107,14 +107,14 @@ def take(
         st.has_last = 1
 
 
-@kernel
-def is_anchor(st: Any, anchor_m: float) -> bool:
+@spliced
+def is_anchor(st: Any, index: StreetIndex, anchor_m: float) -> bool:
     """Tell whether the newest kept ping is to be matched."""
     k = st.n_kept - 1
     a = st.anchor
     if a == NONE or k - a >= MAX_WAIT:
         return True
-    return apart_m(st.kept_lon[a], st.kept_lat[a], st.kept_lon[k], st.kept_lat[k]) >= anchor_m
+    return apart_m(index, st.kept_lon[a], st.kept_lat[a], st.kept_lon[k], st.kept_lat[k]) >= anchor_m
 
 
 @kernel
@@ -167,7 +167,7 @@ def pass_kernel(
         if reason[p] == CLOSE:
             said = DROP_HELD if st.is_held else GOOD
         else:
-            said = judge(st, t_us[p], lon[p], lat[p], par)
+            said = judge(st, t_us[p], lon[p], lat[p], index, par)
         if said >= 0:
             out.dropped[said] += 1
             continue

@@ -9,7 +9,7 @@ from typing import Any, NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from stream.kernel import kernel
+from stream.kernel import kernel, spliced
 from stream.network.model import F64, I32, I64, NONE
 from stream.network.routes import StreetIndex
 
@@ -107,7 +107,7 @@ def pop(heap_rank: F64, heap_label: I32, n: int) -> int:
     return top
 
 
-@kernel
+@spliced
 def search_kernel(index: StreetIndex, source: int, reach_m: float, routes: Routes) -> int:
     """Search the routes from the end of an edge: to every edge whose start lies within the reach.
 

@@ -13,12 +13,10 @@ from stream.detect.carry import MAX_COLUMNS, OTHER, UNFINISHED
 from stream.detect.follow import (
     ADDED,
     UNREACHABLE,
-    Column,
     agreed_column,
     ancestor,
     choose,
     extend,
-    new_column,
     rebase,
     trace,
 )
@@ -32,6 +30,7 @@ from stream.detect.passages import (
     leave_unfinished,
     write_trip,
 )
+from stream.detect.room import Column, new_column
 from stream.detect.search import Routes, new_routes
 from stream.detect.step import Step, new_step
 from stream.detect.trips import END_CLOSE, END_DWELL, END_JUMP, TIMEOUT, drop_kept, is_full, rest

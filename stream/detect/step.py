@@ -13,7 +13,7 @@ from stream.detect.clean import apart_m
 from stream.detect.follow import SAME_EDGE, SHORT_CHORD_M, TURNED, transition
 from stream.detect.search import MAX_LABELS, SHORT_M, Routes, find_route, row_kernel
 from stream.geodesy import wrap_e7
-from stream.kernel import kernel
+from stream.kernel import kernel, spliced
 from stream.network.cells import CELL_E7, HALF_LAT_E7
 from stream.network.model import F64, I32, I64, NONE
 from stream.network.routes import StreetIndex
@@ -55,7 +55,7 @@ def add_piece(step: Step, n: int, edge: int, from_m: float, to_m: float) -> int:
     return n + 1
 
 
-@kernel
+@spliced
 def lay_pieces(
     st: Any,
     at_m: float,
@@ -99,7 +99,7 @@ def lay_pieces(
     return add_piece(step, n, to, 0.0, to_m)
 
 
-@kernel
+@spliced
 def has_gate(index: StreetIndex, step: Step, n: int) -> bool:
     """Tell whether a step passes a gate."""
     for i in range(n):
@@ -150,7 +150,7 @@ def project_on_step(index: StreetIndex, lon: int, lat: int, from_m: float, step:
     return best_at
 
 
-@kernel
+@spliced
 def place_kept(st: Any, first: int, last: int, index: StreetIndex, step: Step, n: int) -> int:
     """Place arrival and leave of the kept pings `first` to `last` along a step.
 
@@ -176,9 +176,10 @@ def place_kept(st: Any, first: int, last: int, index: StreetIndex, step: Step, n
 
 
 @kernel
-def kept_speed(st: Any, k: int) -> float:
+def kept_speed(st: Any, k: int, index: StreetIndex) -> float:
     """Give the speed between a kept ping and the one before it by their chord, m/s."""
     dt_us = st.arrive_us[k] - st.leave_us[k - 1]
     if dt_us <= 0:
         return 0.0
-    return apart_m(st.left_lon[k - 1], st.left_lat[k - 1], st.kept_lon[k], st.kept_lat[k]) / (dt_us * 1e-6)
+    chord_m = apart_m(index, st.left_lon[k - 1], st.left_lat[k - 1], st.kept_lon[k], st.kept_lat[k])
+    return chord_m / (dt_us * 1e-6)
