@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from stream.geodesy import metres_per_degree
+from stream.geodesy import FULL_E7, metres_per_degree, wrap_e7
 from stream.kernel import kernel
 from stream.network.model import F64, I32, I64, NONE
 
@@ -48,6 +48,21 @@ def put_tiles(keys: I64, tiles: I32, hash_key: I64, hash_tile: I32) -> None:
             at = (at + 1) & mask
         hash_key[at] = keys[i]
         hash_tile[at] = tiles[i]
+
+
+@kernel
+def column_at(lon: float, width: int, n_cols: int) -> int:
+    """Give the column of a longitude; columns count on across the 180th meridian, the last one is cut short.
+
+    Parameters
+    ----------
+    lon : float    1e-7 degree east of the 180th meridian; may be below 0 or over a full turn
+    """
+    if lon < 0.0:
+        return math.floor((lon + FULL_E7) / width) - n_cols
+    if lon >= FULL_E7:
+        return math.floor((lon - FULL_E7) / width) + n_cols
+    return math.floor(lon / width)
 
 
 @kernel
@@ -90,16 +105,18 @@ def spread_kernel(
         row_b = int((lat0 + north / k_lat * 1e7) // CELL_E7)
         for tile_row in range(row_a >> 5, (row_b >> 5) + 1):
             width = cell_width[tile_row - tile_row_first]
-            n_cols = (2 * HALF_LON_E7 + width - 1) // width
-            n_tile_cols = (n_cols + TILE - 1) // TILE
+            n_cols = (FULL_E7 + width - 1) // width
             lon0 = np.int64(s.lon) + HALF_LON_E7
-            col_a = math.floor((lon0 + west / k_lon * 1e7) / width)
-            col_b = math.floor((lon0 + east / k_lon * 1e7) / width)
+            col_a = column_at(lon0 + west / k_lon * 1e7, width, n_cols)
+            col_b = column_at(lon0 + east / k_lon * 1e7, width, n_cols)
             if what == 0:
-                for tile_col in range(col_a >> 5, (col_b >> 5) + 1):
-                    if writing:
-                        key_out[n] = tile_key(tile_row, tile_col % n_tile_cols)
-                    n += 1
+                tile_col = NONE
+                for col in range(col_a, col_b + 1):
+                    if col % n_cols >> 5 != tile_col:
+                        tile_col = col % n_cols >> 5
+                        if writing:
+                            key_out[n] = tile_key(tile_row, tile_col)
+                        n += 1
                 continue
             half_w = 0.5 * width * 1e-7 * k_lon
             half_h = 0.5 * CELL_E7 * 1e-7 * k_lat
@@ -107,13 +124,13 @@ def spread_kernel(
             for row in range(max(row_a, tile_row * TILE), min(row_b, tile_row * TILE + TILE - 1) + 1):
                 cy = ((row + 0.5) * CELL_E7 - lat0) * 1e-7 * k_lat
                 for col in range(col_a, col_b + 1):
-                    cx = ((col + 0.5) * width - lon0) * 1e-7 * k_lon
+                    real = col % n_cols
+                    cx = wrap_e7(real * width + width // 2 - lon0) * 1e-7 * k_lon
                     along = min(max(cx * s.ux + cy * s.uy, 0.0), np.float64(s.length))
                     dx = cx - along * s.ux
                     dy = cy - along * s.uy
                     if dx * dx + dy * dy > limit * limit:
                         continue
-                    real = col % n_cols
                     tile = find_tile(hash_key, hash_tile, tile_key(tile_row, real >> 5))
                     if tile < 0:
                         continue

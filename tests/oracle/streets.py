@@ -4,6 +4,7 @@ Built here with plain lists, apart from `stream.network`, so that detection can 
 """
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 
@@ -30,6 +31,18 @@ def grid_streets(
     pairs = [(i * n + j, i * n + j + 1) for i in range(n) for j in range(n - 1)]
     pairs += [(i * n + j, (i + 1) * n + j) for i in range(n - 1) for j in range(n)]
     return _streets(node_lon, node_lat, pairs, entry_m, exit_m, speed_mps)
+
+
+def streets_of(
+    points: Sequence[tuple[int, int]],
+    pairs: Sequence[tuple[int, int]],
+    entry_m: float = 60.0,
+    exit_m: float = 40.0,
+    speed_mps: float = 13.9,
+) -> Streets:
+    """Build straight two-way roads between points in 1e-7 degree, named by their place in the list."""
+    lon, lat = [p[0] for p in points], [p[1] for p in points]
+    return _streets(lon, lat, list(pairs), entry_m, exit_m, speed_mps)
 
 
 def _streets(
