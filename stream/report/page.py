@@ -116,7 +116,7 @@ def _by_maneuver(facts: Facts) -> str:
         f"went faster than its reference speed.</p>{_key()}{_charts(ladder, 'maneuver', 'Delay by maneuver')}"
         f"<h3>The same in figures, seconds; limits at 95 % below</h3>{_table(heads, rows, 2)}"
         "<p class='note'>A quantile is the order statistic of rank ceil(q n), shown by the middle of its "
-        "bin: within 0.125 s or 1 % of it, whichever is more. Limits are free of any assumed distribution; "
+        "bin: within 0.125&nbsp;s or 1&nbsp;% of it, whichever is more. Limits assume no distribution; "
         f"<em>open</em> means that the sample is too small for one.</p>{_held(ladder, facts)}"
     )
 

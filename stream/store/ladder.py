@@ -12,14 +12,14 @@ from typing import Any
 
 import numpy as np
 import polars as pl
-from numpy.typing import NDArray
 
 from stream.config import Settings
 from stream.errors import ConfigError, StoreError
 from stream.store.database import Store
-from stream.tally import quantile_limits_ms, quantile_ms
+from stream.tally import ladder_ms
 
 LEVELS = (5, 15, 50, 85, 95)  # percent
+_QS = tuple(Fraction(level, 100) for level in LEVELS)
 # What a tally of many dimensions is shown by when nothing else is asked for.
 _SHORT = ("zone", "maneuver")
 _MANEUVERS = (
@@ -149,13 +149,10 @@ def _sort_key(name: str, value: str, settings: Settings) -> tuple[float, str]:
         return (0.0, value)
 
 
-def _slices(
-    histogram: pl.DataFrame,
-) -> Iterator[tuple[int, NDArray[np.int64], NDArray[np.int64]]]:
+def _slices(histogram: pl.DataFrame) -> Iterator[tuple[int, list[int], list[int]]]:
     """Give group, bins and counts, group by group, of rows sorted by group and bin."""
     group = histogram["group_ix"].to_numpy()
-    bins = histogram["bin_ix"].cast(pl.Int64).to_numpy()
-    n = histogram["n"].to_numpy()
+    bins, n = histogram["bin_ix"].to_list(), histogram["n"].to_list()
     starts = np.flatnonzero(np.diff(group, prepend=-1)).tolist()
     for start, end in zip(starts, [*starts[1:], len(group)], strict=True):
         yield int(group[start]), bins[start:end], n[start:end]
@@ -165,12 +162,10 @@ def _seconds(ms: float | None) -> float | None:
     return None if ms is None else ms / 1000
 
 
-def _figures(bins: NDArray[np.int64], n: NDArray[np.int64], unit: str) -> dict[str, float | None]:
+def _figures(bins: list[int], n: list[int], unit: str) -> dict[str, float | None]:
     out: dict[str, float | None] = {}
-    for level in LEVELS:
-        q = Fraction(level, 100)
-        low, high = quantile_limits_ms(bins, n, q)
-        out[f"p{level}_{unit}"] = _seconds(quantile_ms(bins, n, q))
+    for level, (value, low, high) in zip(LEVELS, ladder_ms(bins, n, _QS), strict=True):
+        out[f"p{level}_{unit}"] = _seconds(value)
         out[f"p{level}_lower_{unit}"] = _seconds(low)
         out[f"p{level}_upper_{unit}"] = _seconds(high)
     return out

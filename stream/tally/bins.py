@@ -6,7 +6,10 @@ it wherever its bin is closed. The edges come from integer steps alone, so every
 Source: DESIGN.md section 7, METHODS.md section 9.
 """
 
+from bisect import bisect_left
+from collections.abc import Sequence
 from fractions import Fraction
+from itertools import accumulate
 from typing import Any
 
 import numpy as np
@@ -35,6 +38,7 @@ def _build_edges_ms() -> I64:
 # int64[677]: bin i holds EDGES_MS[i - 1] <= value < EDGES_MS[i]; bin 0 lies below all, the last above all.
 EDGES_MS: I64 = _build_edges_ms()
 N_BINS = len(EDGES_MS) + 1
+_EDGES: tuple[int, ...] = tuple(EDGES_MS.tolist())
 
 
 def bin_of(value_ms: NDArray[Any]) -> I64:
@@ -54,12 +58,12 @@ def bin_of(value_ms: NDArray[Any]) -> I64:
 
 def lower_ms(bin_ix: int) -> int | None:
     """Give the smallest value of a bin; None for the one that is open below."""
-    return None if bin_ix == 0 else int(EDGES_MS[bin_ix - 1])
+    return None if bin_ix == 0 else _EDGES[bin_ix - 1]
 
 
 def upper_ms(bin_ix: int) -> int | None:
     """Give the upper edge of a bin, not part of it; None for the one that is open above."""
-    return None if bin_ix == N_BINS - 1 else int(EDGES_MS[bin_ix])
+    return None if bin_ix == N_BINS - 1 else _EDGES[bin_ix]
 
 
 def mid_ms(bin_ix: int) -> float | None:
@@ -81,52 +85,50 @@ def rank_of(n: int, q: Fraction) -> int:
     return -(-q.numerator * n // q.denominator)
 
 
-def _bin_at(bin_ix: I64, cumulative: I64, rank: int) -> int:
-    return int(bin_ix[np.searchsorted(cumulative, rank, side="left")])
-
-
-def quantile_ms(bin_ix: I64, counts: I64, q: Fraction) -> float | None:
-    """Give a quantile of a histogram.
-
-    Parameters
-    ----------
-    bin_ix, counts
-        int[k], bins that are not empty, ascending, and what they hold.
-    q
-        In (0, 1).
-
-    Returns
-    -------
-    float or None
-        Middle of the bin that holds the value of rank ceil(q n); None where that bin is open.
-    """
-    cumulative = np.cumsum(counts)
-    return mid_ms(_bin_at(bin_ix, cumulative, rank_of(int(cumulative[-1]), q)))
-
-
-def quantile_limits_ms(
-    bin_ix: I64, counts: I64, q: Fraction, confidence: Fraction = CONFIDENCE
-) -> tuple[int | None, int | None]:
-    """Give distribution-free confidence limits of a quantile.
+def ladder_ms(
+    bin_ix: Sequence[int],
+    counts: Sequence[int],
+    levels: Sequence[Fraction],
+    confidence: Fraction = CONFIDENCE,
+) -> list[tuple[float | None, int | None, int | None]]:
+    """Give quantiles of a histogram with distribution-free confidence limits.
 
     Parameters
     ----------
     bin_ix, counts
-        As for `quantile_ms`.
-    q, confidence
+        Bins that are not empty, ascending, and what they hold, n > 0 in all.
+    levels
+        Each in (0, 1).
+    confidence
         In (0, 1).
 
     Returns
     -------
-    lower, upper : int or None
-        Lower edge of the bin of the lower order statistic, upper edge of that of the upper one; None
-        where the sample is too small for a limit on that side, or its bin is open.
+    list of (quantile, lower, upper), one per level
+        Middle of the bin that holds the value of rank ceil(q n), None where that bin is open; lower edge of
+        the bin of the lower order statistic and upper edge of that of the upper one, None where the sample
+        is too small for a limit on that side, or its bin is open.
 
-    Source: METHODS.md section 10.
+    Source: METHODS.md sections 9 and 10.
     """
-    cumulative = np.cumsum(counts)
-    low, high = limit_ranks(int(cumulative[-1]), q, confidence)
-    return (
-        None if low is None else lower_ms(_bin_at(bin_ix, cumulative, low)),
-        None if high is None else upper_ms(_bin_at(bin_ix, cumulative, high)),
-    )
+    cumulative = list(accumulate(counts))
+
+    def bin_at(rank: int) -> int:
+        return int(bin_ix[bisect_left(cumulative, rank)])
+
+    out = []
+    for q in levels:
+        low, high = limit_ranks(cumulative[-1], q, confidence)
+        out.append(
+            (
+                mid_ms(bin_at(rank_of(cumulative[-1], q))),
+                None if low is None else lower_ms(bin_at(low)),
+                None if high is None else upper_ms(bin_at(high)),
+            )
+        )
+    return out
+
+
+def quantile_ms(bin_ix: Sequence[int], counts: Sequence[int], q: Fraction) -> float | None:
+    """Give one quantile of a histogram, as `ladder_ms` does."""
+    return ladder_ms(bin_ix, counts, (q,))[0][0]
