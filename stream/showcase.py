@@ -162,10 +162,7 @@ def _measure(paths: _Paths, settings: Settings) -> tuple[pl.DataFrame, pl.DataFr
     """Read true passages (between the pings of their drives) and measured ones in one shape."""
     run = settings.run
     with Store.open(paths.store, read_only=True, memory_mb=run.memory_mb, threads=run.threads) as store:
-        seen = store.frame("export/passages", {"min_passages": 0, "min_vehicles": 0})
-    seen = seen.with_columns(
-        entry_us=pl.col("entry_at").dt.epoch("us"), exit_us=pl.col("exit_at").dt.epoch("us")
-    )
+        seen = store.frame("demo/measured_passage")
     return pl.read_parquet(paths.truth).filter("is_between_pings"), seen
 
 

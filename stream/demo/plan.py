@@ -79,9 +79,10 @@ class Plan:
 
         `stop` and `give_way` make that approach yield; `traffic_signals` only show where it is held.
         """
+        key = f"{junction}<{before}"
+        before = self.next_to(junction, before)
         (x0, y0), (x1, y1) = self.at[junction], self.at[before]
         f = LINE_M / math.hypot(x1 - x0, y1 - y0)
-        key = f"{junction}<{before}"
         self.node(key, x0 + f * (x1 - x0), y0 + f * (y1 - y0))
         for way in self.ways:
             for i, (a, b) in enumerate(zip(way.nodes, way.nodes[1:], strict=False)):

@@ -71,8 +71,13 @@ def _west(plan: Plan) -> None:
         for i in range(8)
     ]
     plan.way([*ring, ring[0]], "secondary", 30, junction="roundabout")
-    plan.node("w1", -560.0, -60.0)
+    plan.node("w1", -640.0, -65.0)
     plan.way(["o0", "w1", _key(0, 2)], "secondary", 60, name="West Road")
+    plan.way(["w1", _key(0, 0)], "tertiary", 50, name="West Fork")
+    for a, b in ((_key(0, 0), _key(0, 2)), (_key(0, 2), _key(0, 0))):
+        plan.banned[a, "w1", b] = "no_right_turn" if a == _key(0, 0) else "no_left_turn"
+    plan.banned["w1", _key(0, 0), _key(0, 1)] = "no_left_turn"
+    plan.banned[_key(0, 1), _key(0, 0), "w1"] = "no_right_turn"
     plan.node("w2", x - 30.0, y)
     plan.node("w3", -1110.0, -90.0)
     plan.node("w4", -1420.0, -40.0)
@@ -154,13 +159,18 @@ def _south(plan: Plan) -> None:
     plan.node("t1", 0.0, -520.0)
     plan.node("t2", 10.0, -800.0)
     plan.node("t3", 30.0, -1180.0)
+    plan.node("t0", 2.0, -575.0)
+    plan.node("v4", 190.0, -800.0)
     plan.way([_key(3, 0), "t1"], "primary", 60, name="South Road")
-    plan.way(["t1", "t2", *plan.bent("t2", "t3", 22.0)[1:]], "primary", 70, name="South Road")
+    plan.way(["t0", "v4"], "tertiary", 50, name="South Fork", oneway="yes")
+    plan.banned["t0", "v4", "t2"] = "no_right_turn"
+    plan.banned["t2", "t0", "v4"] = "no_right_turn"
+    plan.way(["t1", "t0", "t2", *plan.bent("t2", "t3", 22.0)[1:]], "primary", 70, name="South Road")
     plan.node("u1", -400.0, -520.0)
     plan.node("v1", 245.0, -520.0)
     plan.node("v2", 250.0, -800.0)
     plan.way(["s1", "u1", "t1", "v1", "m3"], "tertiary", 50, name="Lower Lane")
-    plan.way(["t2", "v2", "m4"], "unclassified", None, name="Mill Lane")
+    plan.way(["t2", "v4", "v2", "m4"], "unclassified", None, name="Mill Lane")
     plan.way([_key(5, 0), "v1", "v2"], "residential", 30)
     plan.way(plan.bent(_key(0, 0), "u1", 15.0), "residential", 30)
     plan.way(["v2", plan.node("v3", 255.0, -960.0)], "residential", 30)
@@ -193,7 +203,7 @@ STOPS = (
     ("h2", "p2"),
     ("u1", "t1"),
     ("v1", "t1"),
-    ("v2", "t2"),
+    ("v4", "t2"),
     ("k1", "a3"),
     ("k2", "b3"),
 )
@@ -201,6 +211,8 @@ YIELDS = (
     ("q1", "p1"),
     ("h1", "p1"),
     ("q1", "n1"),
+    (_key(0, 0), "w1"),
+    ("t0", "v4"),
     ("h3", "h1"),
     ("h3", "h2"),
     ("h5", "h6"),
