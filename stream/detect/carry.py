@@ -11,9 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 CARRY_VERSION = 1
-MAX_KEPT = 64  # kept pings that wait for a commit, and one before them
+MAX_KEPT = 48  # kept pings that wait for a commit, and one before them
 MAX_COLUMNS = 24  # uncommitted columns (DESIGN.md section 5: 99 % within 7, at most 24)
-MAX_SURVIVORS = 6  # candidates kept in a column
+MAX_SURVIVORS = 4  # candidates kept in a column
 
 IDLE, MOVING, PARKED = 0, 1, 2  # mode
 OTHER, PASSAGE, SECTION, UNFINISHED = 0, 1, 2, 3  # what the time since the last gate belongs to
@@ -82,11 +82,11 @@ STATE = np.dtype(
         # columns of candidates; column 0 is the committed one
         ("n_columns", np.int32),
         ("anchor", np.int32),  # kept ping of the last anchor, -1 none
-        ("column_kept", np.int32, (MAX_COLUMNS,)),
-        ("column_n", np.int32, (MAX_COLUMNS,)),
+        ("column_kept", np.int8, (MAX_COLUMNS,)),
+        ("column_n", np.int8, (MAX_COLUMNS,)),
         ("at_edge", np.int32, (MAX_COLUMNS, MAX_SURVIVORS)),
-        ("back", np.int32, (MAX_COLUMNS, MAX_SURVIVORS)),  # in the column before
-        ("at_m", np.float64, (MAX_COLUMNS, MAX_SURVIVORS)),
+        ("back", np.int8, (MAX_COLUMNS, MAX_SURVIVORS)),  # in the column before
+        ("at_m", np.float32, (MAX_COLUMNS, MAX_SURVIVORS)),
         ("cost", np.float64, (MAX_SURVIVORS,)),  # of the newest column, log units
     ],
     align=True,
