@@ -225,6 +225,11 @@ class Store:
             yield from reader
         except duckdb.OutOfMemoryException as err:
             raise StoreError(f"{self.path}: DuckDB ran out of memory; raise run.memory_mb") from err
+        except (duckdb.IOException, pa.ArrowException) as err:
+            raise StoreError(
+                f"{self.path}: can't be read to its end ({str(err).splitlines()[0]}); "
+                "make room for temporary files, or mend the disk, then run the command again"
+            ) from err
 
     @contextmanager
     def transaction(self) -> Iterator[None]:

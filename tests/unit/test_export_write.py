@@ -367,3 +367,25 @@ def test_file_is_replaced_when_written_again(store: Store, tmp_path: Path) -> No
     write(store, "junctions", to, PLAIN)
     assert to.read_text(encoding="utf-8").startswith("junction_id,")
     assert stat.S_ISREG(to.stat().st_mode)
+
+
+def test_rows_come_in_bounded_batches(store: Store) -> None:
+    """A query is read piece by piece: first its columns alone, then no more rows at once than asked for."""
+    params = {"min_passages": 0, "min_vehicles": 0}
+    sizes = [b.num_rows for b in store.batches("export/passages", params, batch_rows=300)]
+    assert sizes[0] == 0
+    assert sum(sizes) == 800
+    assert len(sizes) >= 3
+    assert max(sizes) <= 2048  # DuckDB's own unit
+
+
+def test_lack_of_memory_is_told_as_such(built: Built, tmp_path: Path) -> None:
+    """An export that can't sort in the memory allowed names the key to raise, and leaves no file."""
+    path = tmp_path / "s.duckdb"
+    with Store.open(path, create=True) as one:
+        fill(one, built, PLAIN, found_at_random(built, 60_000, 900, SEED))
+    with Store.open(path, read_only=True, memory_mb=12, threads=1) as one:
+        one._con.execute("set max_temp_directory_size = '1MB'")
+        with pytest.raises(StoreError, match=r"run\.memory_mb"):
+            write(one, "passages", tmp_path / "p.parquet", PLAIN)
+    assert list(tmp_path.glob("*parquet*")) == []
