@@ -13,8 +13,8 @@
 --            integer, open_speed_mps float, open_error_s float, section_arm integer, section_step_ms
 --            integer, section_at_m double, arrive_us bigint[], leave_us bigint[], kept_lon integer[],
 --            kept_lat integer[], left_lon integer[], left_lat integer[], kept_n integer[], kept_step_ms
---            integer[], n_columns integer, anchor integer, column_kept integer[], column_n integer[],
---            at_edge integer[], back integer[], at_m double[], cost double[], waiting_us bigint[],
+--            integer[], n_columns integer, anchor integer, column_kept tinyint[], column_n tinyint[],
+--            at_edge integer[], back tinyint[], at_m float[], cost double[], waiting_us bigint[],
 --            waiting_lon double[], waiting_lat double[]); writes: carry
 insert into carry (
     vehicle, batch_id, carry_version, t_us, lon, lat, held_us, held_lon, held_lat, has_last, is_held,

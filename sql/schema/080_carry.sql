@@ -81,11 +81,11 @@ create table carry (
     n_columns integer not null,
     anchor integer not null,
     -- by column: kept ping, candidates; by column and row: directed road, row before, chainage
-    column_kept integer[] not null,
-    column_n integer[] not null,
+    column_kept tinyint[] not null,
+    column_n tinyint[] not null,
     at_edge integer[] not null,
-    back integer[] not null,
-    at_m double[] not null,
+    back tinyint[] not null,
+    at_m float[] not null,
     -- of the newest column's candidates, log units
     cost double[] not null,
     -- pings held back until later ones have come (clean.lateness_s), in order of arrival; degrees

@@ -28,7 +28,7 @@ def _filled(seed: int, n: int) -> Any:
             continue
         kind = STATE[name].base
         shape = states[name].shape
-        high = 2 if kind == np.uint8 else 10**9
+        high = 2 if kind in (np.uint8, np.int8) else 10**9
         values = random.integers(0, high, shape).astype(kind)
         if states[name].ndim > 1:
             used = states["n_kept"] if STATE[name].shape == (MAX_KEPT,) else states["n_columns"]
@@ -46,6 +46,7 @@ def test_carry_has_a_column_for_each_field() -> None:
     kinds = {
         "int64": "bigint",
         "int32": "integer",
+        "int8": "tinyint",
         "uint8": "utinyint",
         "float64": "double",
         "float32": "float",
