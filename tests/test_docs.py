@@ -7,6 +7,7 @@ import pytest
 
 from stream.config import load_settings
 from stream.detect.records import DROP_REASONS, UNFINISHED_REASONS
+from stream.export.columns import known_columns
 from stream.tally.strata import DIMENSIONS
 from tests.readme import README, ROOT, commands, keys, spliced
 
@@ -53,6 +54,15 @@ def test_every_key_is_documented_and_every_documented_key_exists() -> None:
 def test_every_reason_is_explained(word: str) -> None:
     """A reason that status prints is explained in README."""
     assert f"`{word}`" in TEXT
+
+
+def test_every_column_in_readme_exists() -> None:
+    """The columns of passages that README explains are columns with an entry in the data dictionary."""
+    part = TEXT.partition("## What it gives")[2].partition("A passage that begins")[0]
+    cells = re.findall(r"^\| (`.+?`) \|", part, re.MULTILINE)
+    named = {name for cell in cells for name in re.findall(r"`(\w+)`", cell)}
+    assert len(named) > 20
+    assert named - known_columns() == set()
 
 
 @pytest.mark.parametrize("word", sorted(DIMENSIONS))
