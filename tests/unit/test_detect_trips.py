@@ -13,6 +13,7 @@ from stream.config import load_settings
 from stream.detect.carry import MAX_KEPT, new_states
 from stream.detect.run import Detector
 from stream.detect.trips import begin_trip, drop_kept, keep_ping
+from stream.network.routes import build_index
 from tests.grid import Row, columns, detect, drive, end_s, endings, joined, reasons, row, stand, trips_of
 from tests.oracle.ground import apart_m, e7
 from tests.oracle.runs import split_trips
@@ -21,6 +22,7 @@ from tests.oracle.streets import grid_streets
 SETTINGS = load_settings()
 BLOCK = 400.0  # gates 60 m before and 40 m behind each crossing: the middle of a block is far from any
 STREETS = grid_streets(3, BLOCK)
+INDEX = build_index(STREETS, 40.0, 1.0, 5.0, 3.0)
 OUTSIDE, INSIDE = (200.0, 600.0), (385.0, 415.0)
 
 
@@ -169,7 +171,7 @@ def test_kept_pings_are_stays_of_plain_lists(seed: int) -> None:
     for t_us, place in walk:
         before = int(states["n_kept"][0])
         assert before < MAX_KEPT
-        kept_new.append(keep_ping(states[0], t_us, *place, 4.0))
+        kept_new.append(keep_ping(states[0], t_us, *place, INDEX, 4.0))
         assert kept_new[-1] == (int(states["n_kept"][0]) == before + 1)
     assert plain_kept(walk, 4.0) == kept_of(states)
     assert sum(kept_new) == len(plain_kept(walk, 4.0)) > 10
@@ -182,7 +184,7 @@ def test_kept_pings_before_the_committed_anchor_are_dropped(n_columns: int, base
     states = new_states(1)
     begin_trip(states[0], walk[0][0], *walk[0][1])
     for t_us, place in walk:
-        keep_ping(states[0], t_us, *place, 4.0)
+        keep_ping(states[0], t_us, *place, INDEX, 4.0)
     kept = plain_kept(walk, 4.0)
     columns = [base + 2 * k for k in range(n_columns)] if base is not None else []
     states["n_columns"] = n_columns
