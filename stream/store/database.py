@@ -15,7 +15,7 @@ import duckdb
 import polars as pl
 
 from stream.errors import StoreError
-from stream.store.files import Statement, names_in, statement, views_in_order
+from stream.store.files import names_in, statement, views_in_order
 
 if TYPE_CHECKING:
     import pyarrow as pa
@@ -51,6 +51,14 @@ def _connect(
         else:
             told = f"can't be opened ({text.splitlines()[0]}); name another file with --store"
         raise StoreError(f"{path}: {told}") from err
+
+
+def _readable(incoming: pl.DataFrame | None) -> Any:
+    """Give a frame as the engine reads it: it knows no 128-bit integers, a decimal holds sums up to 10^38."""
+    if incoming is None:
+        return None
+    wide = [pl.col(c).cast(pl.Decimal(38, 0)) for c, t in incoming.schema.items() if t == pl.Int128]
+    return incoming.with_columns(wide).to_arrow()
 
 
 class Store:
@@ -136,19 +144,21 @@ class Store:
         made_us = now_us()
         with self.transaction():
             for name in names_in("schema"):
-                self._execute(statement(name), None)
+                self.run(name)
             for view in views_in_order():
-                self._execute(view, None)
+                self.run(view.name)
             self.put_meta("format_version", str(FORMAT_VERSION))
             self.put_meta("created_us", str(made_us))
             self.put_meta("reference_id", "1")
             first = {"reference_id": 1, "basis": FIRST_REFERENCE, "made_us": made_us}
             self.run("meta/put_reference", first)
 
-    def _execute(self, one: Statement, params: dict[str, Any] | None) -> list[tuple[Any, ...]]:
+    @contextmanager
+    def _telling(self) -> Iterator[None]:
+        """Turn what the engine says of disk and memory into errors with a mend."""
         try:
-            return self._con.execute(one.text, params or {}).fetchall()
-        except duckdb.IOException as err:
+            yield
+        except (duckdb.IOException, duckdb.FatalException) as err:
             raise StoreError(
                 f"{self.path}: can't be written or read ({str(err).splitlines()[0]}); "
                 "make room or mend the disk, then run the command again"
@@ -170,29 +180,19 @@ class Store:
         incoming
             Frame that the statement reads as `incoming`; columns as in the header.
         """
-        if incoming is None:
-            return self._execute(statement(name), params)
-        with self._registered(incoming):
-            return self._execute(statement(name), params)
-
-    @contextmanager
-    def _registered(self, incoming: pl.DataFrame) -> Iterator[None]:
-        # DuckDB reads no 128-bit integers from Arrow; the decimal holds sums up to 10^38.
-        wide = [pl.col(c).cast(pl.Decimal(38, 0)) for c, t in incoming.schema.items() if t == pl.Int128]
-        self._con.register("incoming", incoming.with_columns(wide).to_arrow())
-        try:
-            yield
-        finally:
-            self._con.unregister("incoming")
+        # The engine finds a local variable by its name. A registered view would do as well, but inside a
+        # transaction it keeps every frame in memory until the commit (38 MB for 200,000 passages).
+        incoming = _readable(incoming)
+        with self._telling():
+            return self._con.execute(statement(name).text, params or {}).fetchall()
 
     def frame(
         self, name: str, params: dict[str, Any] | None = None, incoming: pl.DataFrame | None = None
     ) -> pl.DataFrame:
         """Run one SQL query and give its rows as a frame; hugeint columns come as Int128."""
-        if incoming is not None:
-            with self._registered(incoming):
-                return self.frame(name, params)
-        table = self._con.query(statement(name).text, params=params or {}).to_arrow_table()
+        incoming = _readable(incoming)
+        with self._telling():
+            table = self._con.query(statement(name).text, params=params or {}).to_arrow_table()
         got = pl.from_arrow(table)
         assert isinstance(got, pl.DataFrame)
         wide = [pl.col(c).cast(pl.Int128) for c, t in got.schema.items() if t == pl.Decimal(38, 0)]
@@ -213,10 +213,7 @@ class Store:
 
         Between two batches no other statement may run on this store.
         """
-        if incoming is not None:
-            with self._registered(incoming):
-                yield from self.batches(name, params, None, batch_rows)
-            return
+        incoming = _readable(incoming)
         import pyarrow as pa  # 40 ms that a query without an export need not wait
 
         try:

@@ -1,13 +1,16 @@
 """The store's file: made, opened, checked, and its transactions."""
 
+import gc
+import weakref
 from pathlib import Path
+from typing import Any
 
 import duckdb
 import polars as pl
 import pytest
 
 from stream.errors import StoreError
-from stream.store import FORMAT_VERSION, Store
+from stream.store import FORMAT_VERSION, Store, database
 
 
 def test_new_store_names_its_format_and_first_reference(tmp_path: Path) -> None:
@@ -106,3 +109,23 @@ def test_streets_of_a_store_without_network_are_refused(tmp_path: Path) -> None:
         pytest.raises(StoreError, match="holds no network; run `turntally network EXTRACT` first"),
     ):
         store.streets()
+
+
+def test_frames_written_are_freed_before_the_commit(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A batch of any size holds one chunk's rows: what was written is not kept until the commit."""
+    seen: list[weakref.ref[Any]] = []
+    plain = database._readable
+
+    def noted(incoming: pl.DataFrame | None) -> Any:
+        table = plain(incoming)
+        if table is not None:
+            seen.append(weakref.ref(table))
+        return table
+
+    monkeypatch.setattr(database, "_readable", noted)
+    counted = pl.DataFrame({"reason": ["late"], "n": [1]})
+    with Store.open(tmp_path / "s.duckdb", create=True) as store, store.transaction():
+        for batch_id in (1, 2, 3):
+            store.run("batch/put_batch_count", {"batch_id": batch_id}, counted)
+        gc.collect()
+        assert [one() for one in seen] == [None, None, None]
