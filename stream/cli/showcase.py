@@ -65,6 +65,8 @@ def _told(whole: dict[str, Any]) -> str:
         "",
         f"next: turntally quantiles --store {whole['paths']['store']}",
     ]
+    if "report" in whole["paths"]:
+        lines.append(f"report: {whole['paths']['report']}")
     return "\n".join(lines)
 
 
