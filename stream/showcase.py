@@ -24,6 +24,7 @@ from stream.demo.write import Receivers, receive, vehicle_intervals, write_pings
 from stream.errors import InputError
 from stream.ingest import ingest
 from stream.network import Built, build_network
+from stream.report import write_report
 from stream.store import Store, put_network
 from stream.store.ledger import network_config
 
@@ -57,6 +58,7 @@ class _Paths:
     truth: Path
     faults: Path
     store: Path
+    report: Path
 
 
 def _paths(into: Path, demo: Demo) -> _Paths:
@@ -68,6 +70,7 @@ def _paths(into: Path, demo: Demo) -> _Paths:
         into / "truth.parquet",
         into / "faults.json",
         into / "turntally.duckdb",
+        into / "report.html",
     )
 
 
@@ -84,7 +87,7 @@ def _make_room(into: Path, paths: _Paths) -> None:
     try:
         into.mkdir(parents=True, exist_ok=True)
         wal = paths.store.with_name(paths.store.name + ".wal")
-        for path in (*into.glob("pings_*.parquet"), paths.store, wal, paths.faults):
+        for path in (*into.glob("pings_*.parquet"), paths.store, wal, paths.faults, paths.report):
             path.unlink(missing_ok=True)
     except OSError as err:
         raise InputError(f"{into}: can't be used ({err}); name another folder with --into") from err
@@ -159,9 +162,10 @@ def _drive_days(
 
 
 def _measure(paths: _Paths, settings: Settings) -> tuple[pl.DataFrame, pl.DataFrame]:
-    """Read true passages (between the pings of their drives) and measured ones in one shape."""
+    """Leave the report; read true passages (between pings of their drives) and measured ones."""
     run = settings.run
     with Store.open(paths.store, read_only=True, memory_mb=run.memory_mb, threads=run.threads) as store:
+        write_report(store, paths.report, settings)
         seen = store.frame("demo/measured_passage")
     return pl.read_parquet(paths.truth).filter("is_between_pings"), seen
 
@@ -220,6 +224,7 @@ def run_demo(
     batches = ingest(paths.store, paths.pings, settings, close=True, progress=tell)
     clock.stop("ingest")
     true, seen = _measure(paths, settings)
+    clock.stop("report")
     table = compare(true, seen)
     figures = accuracy(true, seen)
     clock.stop("compare")
@@ -238,5 +243,6 @@ def run_demo(
             "pings": [str(p) for p in paths.pings],
             "truth": str(paths.truth),
             "store": str(paths.store),
+            "report": str(paths.report),
         },
     }

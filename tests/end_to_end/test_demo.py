@@ -62,6 +62,15 @@ def test_table_holds_measured_beside_true(whole):
     assert large["is_close"].all()
 
 
+def test_report_is_left(whole):
+    """The demo leaves a page that holds figures of both zones."""
+    result, into, _ = whole
+    text = (into / "report.html").read_text(encoding="utf-8")
+    assert result["paths"]["report"] == str(into / "report.html")
+    assert "centre" in text
+    assert "outskirts" in text
+
+
 def test_progress_is_told_to_the_end(whole):
     """Driving and taking in are told up to their end."""
     _, _, told = whole
