@@ -5,6 +5,7 @@ Built here with plain lists, apart from `stream.network`, so that detection can 
 
 import math
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -43,6 +44,27 @@ def streets_of(
     """Build straight two-way roads between points in 1e-7 degree, named by their place in the list."""
     lon, lat = [p[0] for p in points], [p[1] for p in points]
     return _streets(lon, lat, list(pairs), entry_m, exit_m, speed_mps)
+
+
+def close_edges(streets: Streets, closed: Sequence[int]) -> Streets:
+    """Give the streets with some edges closed to cars: none of them follows any edge."""
+    starts, succ, turn = [0], [], []
+    for e in range(len(streets.edge_open)):
+        for k in range(streets.succ_start[e], streets.succ_start[e + 1]):
+            if streets.succ_edge[k] not in closed and e not in closed:
+                succ.append(streets.succ_edge[k])
+                turn.append(streets.succ_turn_deg[k])
+        starts.append(len(succ))
+    is_open = streets.edge_open.copy()
+    is_open[list(closed)] = 0
+    return replace(
+        streets,
+        edge_open=is_open,
+        succ_start=np.array(starts, np.int32),
+        succ_edge=np.array(succ, np.int32),
+        succ_turn_deg=np.array(turn, np.float32),
+        succ_banned=np.zeros(len(succ), np.uint8),
+    )
 
 
 def _streets(
