@@ -13,6 +13,11 @@ from stream.geodesy import metres_per_degree
 from stream.network.model import Streets
 
 
+def wrapped(lon_e7: int) -> int:
+    """Bring a longitude in 1e-7 degree into [-180, 180) degrees."""
+    return (lon_e7 + 1_800_000_000) % 3_600_000_000 - 1_800_000_000
+
+
 def grid_streets(
     n: int = 4,
     spacing_m: float = 150.0,
@@ -27,7 +32,7 @@ def grid_streets(
     node_lon, node_lat = [], []
     for i in range(n):
         for j in range(n):
-            node_lon.append(round((lon + j * spacing_m / k_lon) * 1e7))
+            node_lon.append(wrapped(round((lon + j * spacing_m / k_lon) * 1e7)))
             node_lat.append(round((lat + i * spacing_m / k_lat) * 1e7))
     pairs = [(i * n + j, i * n + j + 1) for i in range(n) for j in range(n - 1)]
     pairs += [(i * n + j, (i + 1) * n + j) for i in range(n - 1) for j in range(n)]
@@ -82,7 +87,8 @@ def _streets(
 
     def vector(e: int) -> tuple[float, float]:
         a, b = tail[e], head[e]
-        return (node_lon[b] - node_lon[a]) * 1e-7 * k_lon, (node_lat[b] - node_lat[a]) * 1e-7 * k_lat
+        east = wrapped(node_lon[b] - node_lon[a]) * 1e-7 * k_lon
+        return east, (node_lat[b] - node_lat[a]) * 1e-7 * k_lat
 
     length = [math.hypot(*vector(2 * r)) for r in range(len(pairs))]
     degree = [sum(v in p for p in pairs) for v in range(len(node_lon))]
