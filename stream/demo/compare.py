@@ -66,11 +66,18 @@ def match(true: pl.DataFrame, seen: pl.DataFrame) -> pl.DataFrame:
 def accuracy(true: pl.DataFrame, seen: pl.DataFrame) -> dict[str, Any]:
     """Tell how true passages were seen.
 
+    Parameters
+    ----------
+    true : as in `match`, with stood_near_gate; where it has `is_between_pings`, only those count as missed
+
     Returns
     -------
-    n_true, n_seen, recall and precision (same junction at the same time), right_arms (of the matched),
-    bias_ms (mean of seen minus true traversal, right arms), mean_abs_ms (those not standing near a gate).
+    n_true (that could be seen), n_seen, recall and precision (same junction at the same time), right_arms
+    (of the matched), bias_ms (mean of seen minus true traversal, right arms), mean_abs_ms (those not standing near a gate).
     """
+    if "is_between_pings" not in true.columns:
+        true = true.with_columns(is_between_pings=pl.lit(value=True))
+    could = int(true["is_between_pings"].sum())
     both = match(true, seen).filter(pl.col("seen_entry_us").is_not_null())
     right = both.filter(
         (pl.col("arm_in") == pl.col("seen_arm_in")) & (pl.col("arm_out") == pl.col("seen_arm_out"))
@@ -80,9 +87,9 @@ def accuracy(true: pl.DataFrame, seen: pl.DataFrame) -> dict[str, Any]:
     )
     steady = right.filter(~pl.col("stood_near_gate"))
     return {
-        "n_true": true.height,
+        "n_true": could,
         "n_seen": seen.height,
-        "recall": both.height / max(true.height, 1),
+        "recall": both.filter("is_between_pings").height / max(could, 1),
         "precision": both.height / max(seen.height, 1),
         "right_arms": right.height / max(both.height, 1),
         "bias_ms": right["off_ms"].mean(),

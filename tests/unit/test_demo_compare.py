@@ -52,6 +52,14 @@ def test_accuracy_counts_what_was_seen():
     assert got["mean_abs_ms"] == pytest.approx(400.0)
 
 
+def test_passage_outside_its_pings_is_no_miss_and_no_mistake():
+    """A true passage that no ping could show is not missed; seen all the same, it is no false one."""
+    true = passages(("a", 1, 0, 1, 0, 10), ("a", 2, 0, 1, 30, 40), ("b", 1, 0, 1, 0, 10))
+    true = true.with_columns(is_between_pings=pl.Series([True, False, False]))
+    got = accuracy(true, passages(("a", 1, 0, 1, 0, 10), ("a", 2, 0, 1, 30, 40)))
+    assert (got["n_true"], got["recall"], got["precision"]) == (1, 1.0, 1.0)
+
+
 def test_quantiles_are_order_statistics():
     """P85 of ten values is the ninth, the median the fifth. Source: rank ceil(q n), METHODS.md section 9."""
     delays = pl.DataFrame(
