@@ -73,7 +73,8 @@ def accuracy(true: pl.DataFrame, seen: pl.DataFrame) -> dict[str, Any]:
     Returns
     -------
     n_true (that could be seen), n_seen, recall and precision (same junction at the same time), right_arms
-    (of the matched), bias_ms (mean of seen minus true traversal, right arms), mean_abs_ms (those not standing near a gate).
+    (of the matched), bias_ms (mean of seen minus true traversal, right arms), mean_abs_ms (those that did
+    not stand near a gate).
     """
     if "is_between_pings" not in true.columns:
         true = true.with_columns(is_between_pings=pl.lit(value=True))
