@@ -84,7 +84,8 @@ def _out_of_order(store: Store, settings: Settings, where: str, totals: BatchTot
         mend = "name deliveries in the order of their times"
     times = [row["last_ping_at"] for row in store.rows("ledger/all_batch") if row["last_ping_at"] is not None]
     if times:
-        mend += f"; pings up to {max(times)} UTC are in already, older days can't follow newer ones"
+        newest = f"{max(times):%Y-%m-%d %H:%M:%S}"
+        mend += f"; pings up to {newest} UTC are in already, older days can't follow newer ones"
     return InputError(f"{said}: {mend}")
 
 

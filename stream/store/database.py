@@ -199,8 +199,9 @@ class Store:
         return got.with_columns(wide)
 
     def rows(self, name: str, params: dict[str, Any] | None = None) -> list[dict[str, Any]]:
-        """Run one SQL query and give its rows as dicts."""
-        return self.frame(name, params).to_dicts()
+        """Run one SQL query and give its rows as dicts; times bear their zone, UTC."""
+        times = pl.col(pl.Datetime("us")).dt.replace_time_zone("UTC")
+        return self.frame(name, params).with_columns(times).to_dicts()
 
     def batches(
         self,

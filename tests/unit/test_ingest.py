@@ -350,3 +350,21 @@ def test_vehicle_names_hide_the_ids(store_path: Path, tmp_path: Path, settings: 
     assert b"number plate" not in store_path.read_bytes()
     assert len({row[0] for row in dump(store_path, by_batch=False)["passage"]}) == 1
     assert _listing(store_path.parent) == ["s.duckdb", "s.duckdb.key"]
+
+
+def test_another_network_is_refused_once_batches_are_in(
+    store_path: Path, tmp_path: Path, settings: Settings
+) -> None:
+    """A network may be replaced until the first batch; then only the same one is taken."""
+    with Store.open(store_path) as store:
+        put_network(store, plan("another"), network_config(settings))
+        put_network(store, plan(), network_config(settings))
+    ingest(store_path, [write(tmp_path / "1.csv", drive("a", 10))], settings)
+    before = dump(store_path)
+    with Store.open(store_path) as store:
+        put_network(store, plan(), network_config(settings))
+        with pytest.raises(
+            StoreError, match="holds 1 batches on network two junctions, the one given is anot"
+        ):
+            put_network(store, plan("another"), network_config(settings))
+    assert dump(store_path) == before

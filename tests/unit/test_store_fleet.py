@@ -122,3 +122,30 @@ def test_names_depend_on_the_key_only(tmp_path: Path, settings: Settings, fresh_
     two.grow(["b"])
     assert one.codes[1] == two.codes[0]
     assert one.codes[0] != one.codes[1]
+
+
+def test_pings_held_back_wait_in_the_store(fresh_store: Store) -> None:
+    """Pings that wait for later ones come back with their vehicle, before those that follow, to the bit."""
+    late_us = 10_000_000
+    first = Fleet(fresh_store, NAMER, late_us)
+    first.grow(["a", "b", "c"])
+    vehicle_ix = np.array([1, 0, 1, 1], np.int32)
+    t_us = np.array([5, 7, 3, 4], np.int64) * 1_000_000
+    lon = np.array([0.1, 1 / 3, 10.000000012345, -1e-9])
+    free = first.in_order((vehicle_ix, t_us, lon, lon + 50))
+    assert len(free[0]) == 0
+    assert (first.held_before, first.held_now) == (0, 4)
+    first.put_carry(1)
+    second = Fleet(fresh_store, NAMER, late_us)
+    second.grow(["b"])
+    assert (second.held_before, second.held_now) == (3, 3)
+    later = np.array([20_000_000], np.int64)
+    free = second.in_order((np.zeros(1, np.int32), later, np.array([0.5]), np.array([0.5])))
+    assert free[1].tolist() == [3_000_000, 4_000_000, 5_000_000]
+    assert free[2].tolist() == [lon[2], lon[3], lon[0]]
+    second.put_carry(2)
+    third = Fleet(fresh_store, NAMER, late_us)
+    third.add_open()
+    assert third.names == ["a", "b"]
+    assert third.let_go()[1].tolist() == [7_000_000, 20_000_000]
+    assert third.held_now == 0
