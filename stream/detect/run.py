@@ -77,11 +77,12 @@ class Detector:
             raise ValueError("a vehicle without a record")
         if n >= 2**31:
             raise ValueError("more pings at once than an order can number")
-        vehicle_ix = np.ascontiguousarray(vehicle_ix, np.int32)
-        t_us = np.ascontiguousarray(t_us, np.int64)
+        # Frozen arrays are another type to the compiler: it would compile the whole pass once more for them.
+        vehicle_ix = np.require(vehicle_ix, np.int32, ["C", "W"])
+        t_us = np.require(t_us, np.int64, ["C", "W"])
         east, north = np.empty(n, np.int32), np.empty(n, np.int32)
         reason = np.empty(n, np.int8)
-        degrees = (np.ascontiguousarray(lon, np.float64), np.ascontiguousarray(lat, np.float64))
+        degrees = (np.require(lon, np.float64, ["C", "W"]), np.require(lat, np.float64, ["C", "W"]))
         self._shared(
             lambda a, b: place_kernel(
                 degrees[0][a:b], degrees[1][a:b], self._index, east[a:b], north[a:b], reason[a:b]

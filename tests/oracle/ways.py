@@ -1,16 +1,21 @@
 """Plain routes, matching and gates: Dijkstra, a Viterbi over the whole run, and the gates along its path.
 
 Written from DESIGN.md section 5 and the papers (Dijkstra 1959; Newson & Krumm 2009); nothing is committed
-before the run ends, nothing is remembered, nothing is cut into tiles.
+before the run ends, nothing is cut into tiles. The limits that only tune (how many, how far) are the code's.
 """
 
 import heapq
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from itertools import pairwise
+from itertools import chain, pairwise
 
 from stream.config import Settings
+from stream.detect.candidates import MAX_ROADS
+from stream.detect.carry import MAX_SURVIVORS
+from stream.detect.follow import SHORT_CHORD_M
+from stream.detect.fused import MAX_WAIT
+from stream.detect.search import SHORT_M, TURN_M
 from stream.network.model import Streets
 from tests.oracle.ground import Point, apart_m, nearest, roads_of
 
@@ -18,9 +23,6 @@ Fix = tuple[int, Point]
 Spot = tuple[int, float]  # edge, chainage
 Piece = tuple[int, float, float]  # edge, from, to
 Route = tuple[float, float, int | None]  # metres between, log units, the edge before
-TURN_M = 12.0  # metres that a log unit of turn cost weighs among routes
-SHORT_CHORD_M, SHORT_REACH_M = 120.0, 350.0  # shorter steps search less far
-MAX_ROADS, MAX_SURVIVORS, MAX_WAIT = 10, 6, 14
 
 
 @dataclass
@@ -108,7 +110,7 @@ class Ways:
 
     def reach_m(self, chord_m: float) -> float:
         """Give how far routes are searched for a step."""
-        return SHORT_REACH_M if chord_m <= SHORT_CHORD_M else self.settings.follow.route_reach_m
+        return SHORT_M if chord_m <= SHORT_CHORD_M else self.settings.follow.route_reach_m
 
     def anchors(self, fixes: Sequence[Fix]) -> list[Fix]:
         """Give the pings that are matched: some metres apart, or after many kept ones, and the last kept."""
@@ -148,18 +150,18 @@ class Ways:
             least = min(p[0] for p in priced)
             kept = sorted((p for p in priced if p[0] <= least + follow.prune), key=lambda p: p[0])
             columns.append((fix, [(p[0] - least, p[1], p[2]) for p in kept[:MAX_SURVIVORS]]))
-        chain = []
+        out = []
         k = 0
         for fix, states in reversed(columns):
-            chain.append((fix, states[k][1]))
+            out.append((fix, states[k][1]))
             k = states[k][2]
-        return chain[::-1]
+        return out[::-1]
 
-    def path(self, chain: Sequence[tuple[Fix, Spot]]) -> list[list[Piece]]:
+    def path(self, places: Sequence[tuple[Fix, Spot]]) -> list[list[Piece]]:
         """Give the pieces of each step of the matched path; what was reached is never gone back on."""
         steps = []
-        reach = chain[0][1][1] if chain else 0.0
-        for (fix_a, a), (fix_b, b) in pairwise(chain):
+        reach = places[0][1][1] if places else 0.0
+        for (fix_a, a), (fix_b, b) in pairwise(places):
             chord = apart_m(fix_a[1], fix_b[1])
             kind, long = self.step(a, b, chord)[1], self.length[a[0]]
             if kind == "same":
@@ -190,24 +192,19 @@ class Ways:
         s = self.streets
         done: list[tuple[int, int]] = []
         left: list[tuple[int, str]] = []
-        arm, met = -1, False
-        for pieces in steps:
-            for k, (e, low, high) in enumerate(pieces):
-                node = s.road_from[e // 2] if e % 2 == 0 else s.road_to[e // 2]
-                if arm >= 0 and k and s.node_junction[node] == s.arm_junction[arm]:
-                    met = True
-                out, into = int(s.exit_gate_arm[e]), int(s.entry_gate_arm[e])
-                if arm >= 0 and out >= 0 and low < s.exit_gate_at_m[e] <= high:
-                    same = s.arm_junction[out] == s.arm_junction[arm]
-                    if same and (out != arm or met):
-                        done.append((arm, out))
-                    else:
-                        left.append((arm, "turned_back" if same else "break"))
-                    arm = -1
-                if into >= 0 and low < s.entry_gate_at_m[e] <= high:
-                    if arm >= 0:
-                        left.append((arm, "turned_back"))
-                    arm, met = into, False
+        arm = -1
+        for e, low, high in chain.from_iterable(steps):
+            out, into = int(s.exit_gate_arm[e]), int(s.entry_gate_arm[e])
+            if arm >= 0 and out >= 0 and low < s.exit_gate_at_m[e] <= high:
+                if s.arm_junction[out] == s.arm_junction[arm]:
+                    done.append((arm, out))
+                else:
+                    left.append((arm, "break"))
+                arm = -1
+            if into >= 0 and low < s.entry_gate_at_m[e] <= high:
+                if arm >= 0:
+                    left.append((arm, "turned_back"))
+                arm = into
         if arm >= 0:
             left.append((arm, "close"))
         return done, left

@@ -10,7 +10,7 @@ from hypothesis import settings as hypothesis_settings
 from hypothesis import strategies as st
 
 from stream.config import load_settings
-from stream.detect.carry import STATE, carry_columns, held_rows, new_states, states_from_columns
+from stream.detect.carry import MAX_KEPT, STATE, carry_columns, held_rows, new_states, states_from_columns
 from stream.detect.records import Found
 from stream.detect.run import Detector
 from tests.grid import Row, columns, drive, end_s, joined, row, stand
@@ -183,6 +183,6 @@ def test_carry_of_another_form_is_refused(detectors: dict[int, Detector]) -> Non
     missing = {name: value for name, value in whole_columns.items() if name != "reach_m"}
     with pytest.raises(ValueError, match="reach_m"):
         states_from_columns(missing)
-    long = {**whole_columns, "arrive_us": (np.zeros(70, np.int64), np.array([0, 70]))}
-    with pytest.raises(ValueError, match=r"arrive_us.*vehicle 1.*70.*64"):
+    long = {**whole_columns, "arrive_us": (np.zeros(MAX_KEPT + 3, np.int64), np.array([0, MAX_KEPT + 3]))}
+    with pytest.raises(ValueError, match=rf"arrive_us.*vehicle 1.*{MAX_KEPT + 3}.*{MAX_KEPT}"):
         states_from_columns(long)

@@ -13,7 +13,7 @@ from stream.config import load_settings
 from stream.detect.carry import held_rows, new_states
 from stream.detect.run import Detector
 from stream.network.model import Streets
-from tests.grid import START_US, columns, joined, lon_lat
+from tests.grid import START_US, columns, drive, end_s, joined, lon_lat, row
 from tests.oracle.audit import check_all, check_counts
 from tests.oracle.ground import radii_m
 from tests.oracle.streets import close_edges, grid_streets
@@ -80,7 +80,7 @@ def rambles(name: str, seed: int, n: int) -> tuple[Any, ...]:
     across, along = radii_m(lat0)
     step = 30.0 if name == "dense" else 150.0
     last = 7 if name == "dense" else 4
-    noise_m = float(rng.choice([0.0, 3.0, 12.0, 40.0]))
+    noise_m = float(rng.choice([0.0, 3.0, 6.0, 12.0, 40.0]))
     rows = []
     for vehicle in range(4):
         t_us, at, to = START_US + int(rng.integers(HOUR_US)), np.zeros(2), np.zeros(2)
@@ -123,6 +123,25 @@ def test_white_noise_is_counted_and_makes_sense(detectors: dict[str, Detector], 
     lon, lat = np.array([lon_lat(*p) for p in rng.uniform(-300.0, 900.0, (n, 2)).tolist()]).T
     args = (rng.integers(0, 3, n).astype(np.int32), t_us, lon.copy(), lat.copy())
     check(detectors["blocks"], TOWNS["blocks"][0], args, 3)
+
+
+@pytest.mark.parametrize("spread_m", [2.5, 6.0, 9.0])
+def test_milling_about_off_the_streets_breaks_the_path(
+    detectors: dict[str, Detector], spread_m: float
+) -> None:
+    """From a street into a yard, hundreds of pings there with no street near, and on: room never runs out."""
+    rng = np.random.default_rng(1)
+    rows = drive([(10.0, 150.0), (75.0, 150.0), (75.0, 225.0)], 5.0)
+    for _ in range(400):
+        rows.append(
+            row(end_s(rows) + 0.5, *(np.array([75.0, 225.0]) + rng.normal(0.0, spread_m, 2)).tolist())
+        )
+    rows += drive([(75.0, 225.0), (75.0, 150.0), (400.0, 150.0)], 8.0, start_s=end_s(rows) + 1.0)
+    states = new_states(1)
+    found = joined([detectors["blocks"].feed(states, *columns(rows)), detectors["blocks"].close(states)])
+    check_all(found, TOWNS["blocks"][0])
+    assert found.trips["n_breaks"].tolist() == [1]
+    assert len(found.passages) == 2
 
 
 @pytest.mark.parametrize("t_us", [0, 1, 2**62])

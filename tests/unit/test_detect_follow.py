@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from stream.config import Settings, load_settings
-from stream.detect.carry import new_states
+from stream.detect.carry import MAX_SURVIVORS, new_states
 from stream.detect.follow import agreed_column, ancestor, choose, rebase, trace
 from stream.detect.records import Found
 from stream.detect.run import Detector
@@ -145,7 +145,7 @@ def paths(columns_: list[list[tuple[int, int]]]) -> Any:
         for c, (edge, back) in enumerate(candidates):
             states["at_edge"][0, k, c], states["back"][0, k, c] = edge, back
             states["at_m"][0, k, c] = 10.0 * k + c
-    states["cost"][0] = np.arange(6)
+    states["cost"][0] = np.arange(MAX_SURVIVORS)
     return states
 
 

@@ -4,11 +4,11 @@ import numpy as np
 import pytest
 
 from stream.config import load_settings
-from stream.detect.search import SHORT_M, Routes, find_route, new_routes, row_kernel
+from stream.detect.search import SHORT_M, TURN_M, Routes, find_route, new_routes, row_kernel
 from stream.network.model import NONE, Streets
 from stream.network.routes import StreetIndex, build_index
 from tests.oracle.streets import close_edges, grid_streets, streets_of
-from tests.oracle.ways import TURN_M, Ways
+from tests.oracle.ways import Ways
 
 SETTINGS = load_settings()
 # Rows keep metres and costs in 32 bits: up to 2 km to a tenth of a millimetre, some log units to a millionth.
