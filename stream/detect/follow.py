@@ -8,6 +8,8 @@ exponential |route - chord|); online Viterbi: commit where all surviving paths s
 
 from typing import Any
 
+import numpy as np
+
 from stream.detect.candidates import Places, find_places_kernel
 from stream.detect.carry import MAX_SURVIVORS
 from stream.detect.clean import apart_m
@@ -90,7 +92,8 @@ def list_candidates(index: StreetIndex, places: Places, n: int, par: Any, column
             e = 2 * road + direction
             if index.edge[e].is_open:
                 column.edge[m] = e
-                column.at_m[m] = places.at_m[i] if direction == 0 else index.edge[e].length - places.at_m[i]
+                at_m = places.at_m[i] if direction == 0 else index.edge[e].length - places.at_m[i]
+                column.at_m[m] = np.float32(at_m)  # as the record keeps it: priced and laid are one place
                 column.cost[m] = cost
                 column.back[m] = 0
                 m += 1

@@ -67,7 +67,7 @@ def lay_pieces(
     routes: Routes,
     step: Step,
 ) -> int:
-    """Lay the way from the committed position to the next one.
+    """Lay the way from the committed position to the next one; without a route, straight over.
 
     Returns
     -------
@@ -87,9 +87,12 @@ def lay_pieces(
         turn_m = min(max(reach, length - to_m), length)
         n = add_piece(step, 0, e, reach, turn_m)
         return add_piece(step, n, to, length - turn_m, max(to_m, length - turn_m))
+    found = find_route(routes, slot, to)
+    if found == NONE and to == e:
+        return add_piece(step, 0, e, reach, max(reach, to_m))
     n = add_piece(step, 0, e, reach, length)
     m = 0
-    between = routes.route[find_route(routes, slot, to)].before
+    between = routes.route[found].before if found != NONE else NONE
     while between != NONE:
         step.route[m] = between
         m += 1

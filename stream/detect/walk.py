@@ -52,7 +52,7 @@ def look_at(
         return NONE, n
     at_m, square = project_on_edge(index, e, lon, lat, k_lon, k_lat)
     column.edge[n] = e
-    column.at_m[n] = at_m
+    column.at_m[n] = np.float32(at_m)  # as the record keeps it
     column.square_m2[n] = square
     column.back[n] = NONE
     column.cost[n] = np.inf

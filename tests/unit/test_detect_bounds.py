@@ -9,12 +9,17 @@ import pytest
 
 SCENARIO = """
 import numpy as np
+from stream.detect.search import find_route, new_routes
 from tests.property.test_detect_garbage import SETTINGS, TOWNS, Detector, check, rambles
 
 for name, town in TOWNS.items():
     detector = Detector(town[0], SETTINGS, threads=1)
     n = sum(check(detector, town[0], rambles(name, seed, 600), 4) for seed in range(4))
     print(name, n)
+try:
+    find_route(new_routes(), 1 << 20, 5)
+except IndexError:
+    print("checked", 1)
 """
 
 
@@ -33,5 +38,6 @@ def test_no_kernel_reads_or_writes_beyond_an_array(tmp_path: Path) -> None:
     )
     assert done.returncode == 0, done.stderr
     found = dict(line.rsplit(" ", 1) for line in done.stdout.splitlines())
+    assert found.pop("checked") == "1", "bounds were not checked"
     assert set(found) == {"blocks", "dense", "one-way", "across 180"}
     assert sum(int(n) for n in found.values()) > 50

@@ -6,12 +6,18 @@ import numpy as np
 import pytest
 
 from stream.config import Settings, load_settings
+from stream.detect.candidates import new_places
 from stream.detect.carry import MAX_SURVIVORS, new_states
-from stream.detect.follow import agreed_column, ancestor, choose, rebase, trace
+from stream.detect.follow import agreed_column, ancestor, choose, extend, rebase, trace
+from stream.detect.parameters import parameters
 from stream.detect.records import Found
+from stream.detect.room import new_column
 from stream.detect.run import Detector
+from stream.detect.search import new_routes
+from stream.detect.trips import begin_trip, keep_ping
 from stream.network.model import Streets
-from tests.grid import Row, columns, drive, joined, reasons
+from stream.network.routes import build_index
+from tests.grid import Row, columns, drive, joined, lon_lat, reasons
 from tests.oracle.ground import apart_m, e7
 from tests.oracle.streets import close_edges, grid_streets
 from tests.oracle.ways import Spot, Ways
@@ -19,6 +25,7 @@ from tests.oracle.ways import Spot, Ways
 SETTINGS = load_settings()
 SPACING = 150.0
 STREETS = grid_streets(5, SPACING)
+INDEX = build_index(STREETS, 40.0, 1.0, 5.0, 3.0)
 # Places in the twin may be centimetres off: its metres are its own (see test_detect_places.py).
 NEAR_M = 0.05
 SPARSE = [(10.0, 10.0), (4.0, 10.0), (12.0, 15.0), (9.0, 30.0), (13.0, 20.0)]  # speed, interval
@@ -133,6 +140,18 @@ def test_one_way_streets_are_followed_their_way(make_settings: Any) -> None:
     detector = Detector(streets, settings, threads=1)
     for seed in range(3):
         compare(streets, detector, settings, journey(20 + seed, 9.0, 12.0))
+
+
+def test_places_are_priced_as_they_are_kept(detector: Detector) -> None:
+    """What is priced is the kept place itself: a place is kept in 32 bits, and never compared in more."""
+    states = new_states(1)
+    places, column = new_places(), new_column()
+    begin_trip(states[0], 1, *e7(*lon_lat(70.123, 3.0)))
+    keep_ping(states[0], 1, *e7(*lon_lat(70.123, 3.0)), INDEX, 4.0)
+    extend(states[0], 0, INDEX, parameters(SETTINGS)[0], new_routes(), places, column)
+    n = int(states["column_n"][0, 0])
+    assert n == 2
+    assert sorted(states["at_m"][0, 0, :n].tolist()) == sorted(column.at_m[:n].tolist())
 
 
 def paths(columns_: list[list[tuple[int, int]]]) -> Any:
