@@ -215,6 +215,19 @@ def test_time_after_a_break_belongs_to_nothing(detector: Detector) -> None:
     assert int(t["other_us"]) == 0
 
 
+def test_time_to_an_exit_gate_after_a_break_is_unfinished_time(detector: Detector) -> None:
+    """Off the streets inside, on again behind a crossing: the time to the exit gate there is unfinished."""
+    rows = by_break()
+    rows += drive([(BLOCK, 420.0), (BLOCK, 700.0)], start_s=end_s(rows) + 10.0)
+    found = found_of(detector, rows)
+    t = found.trips[0]
+    assert (reasons(found), len(found.passages)) == (["break"], 0)
+    assert int(t["first_gate_us"]) == int(found.unfinished["entry_us"][0])
+    assert abs(int(t["last_gate_us"]) - rows[-1][0] + (700.0 - 440.0) / 10.0 * 1e6) < NEAR_US
+    assert int(t["unfinished_us"]) == int(t["last_gate_us"]) - int(t["first_gate_us"])
+    assert (int(t["other_us"]), int(t["section_us"])) == (0, 0)
+
+
 def test_trip_that_meets_no_gate_has_none(detector: Detector) -> None:
     """A drive within a block has no gate, no time to split, and its length."""
     t = found_of(detector, drive([(60.0, BLOCK), (300.0, BLOCK)])).trips[0]
