@@ -135,6 +135,43 @@ def meet(st: Any, index: StreetIndex, step: Step, from_piece: int, to_piece: int
 
 
 @kernel
+def is_slow_stretch(st: Any, k: int, is_move: int, dt_us: int, index: StreetIndex, par: Any) -> bool:
+    """Tell whether the vehicle was slow in the stay at kept ping k, or on the way from it to the next."""
+    if is_move:
+        metres = apart_m(index, st.left_lon[k], st.left_lat[k], st.kept_lon[k + 1], st.kept_lat[k + 1])
+    else:
+        metres = apart_m(index, st.kept_lon[k], st.kept_lat[k], st.left_lon[k], st.left_lat[k])
+    return dt_us > 0 and metres < par.slow_mps * dt_us * 1e-6
+
+
+@kernel
+def go_along(st: Any, to_m: float, first: int, last: int, index: StreetIndex, par: Any) -> bool:
+    """Commit a step that stays on its edge and passes no gate; False (nothing done) for others."""
+    e = index.edge[st.edge]
+    reach = st.reach_m
+    far = max(reach, to_m)
+    if reach < e.exit_at <= far or reach < e.entry_at <= far:
+        return False
+    total = far - reach
+    for k in range(first, last):
+        for is_move in range(2):
+            from_us = st.leave_us[k] if is_move else st.arrive_us[k]
+            to_us = st.arrive_us[k + 1] if is_move else st.leave_us[k]
+            dt_us = to_us - from_us
+            is_slow = False
+            if st.open_arm != NONE or dt_us >= STAND_US:
+                is_slow = is_slow_stretch(st, k, is_move, dt_us, index, par)
+            spend(st, from_us, to_us, is_slow, dt_us // 1000 if is_move else st.kept_step_ms[k])
+            if is_slow and dt_us >= STAND_US:
+                st.slow_at_m = st.path_m + total * (k + is_move - first) / (last - first)
+            if st.open_arm != NONE:
+                st.open_n += 1 if is_move else st.kept_n[k] - 1
+    st.path_m += total
+    st.reach_m = far
+    return True
+
+
+@kernel
 def advance(
     st: Any,
     vehicle: int,
@@ -157,8 +194,11 @@ def advance(
     to, to_m : edge and chainage of the next one
     first, last : int    their kept pings
     """
+    if to == st.edge and to_m >= at_m - par.back_m and go_along(st, to_m, first, last, index, par):
+        return
     chord_m = apart_m(index, st.kept_lon[first], st.kept_lat[first], st.kept_lon[last], st.kept_lat[last])
-    n = lay_pieces(st, at_m, to, to_m, chord_m, index, par, routes, step)
+    dt_us = st.arrive_us[last] - st.leave_us[first]
+    n = lay_pieces(st, at_m, to, to_m, chord_m, dt_us, index, par, routes, step)
     total = step.start_m[n - 1] + step.to_m[n - 1] - step.from_m[n - 1]
     if has_gate(index, step, n):
         m = place_kept(st, first, last, index, step, n)
@@ -178,11 +218,9 @@ def advance(
         from_us = step.t_us[j]
         dt_us = step.t_us[j + 1] - from_us
         step_ms = dt_us // 1000 if is_move else st.kept_step_ms[k]
-        if is_move:
-            slow_m = apart_m(index, st.left_lon[k], st.left_lat[k], st.kept_lon[k + 1], st.kept_lat[k + 1])
-        else:
-            slow_m = apart_m(index, st.kept_lon[k], st.kept_lat[k], st.left_lon[k], st.left_lat[k])
-        is_slow = dt_us > 0 and slow_m < par.slow_mps * dt_us * 1e-6
+        is_slow = False
+        if st.open_arm != NONE or cursor != NONE or dt_us >= STAND_US:
+            is_slow = is_slow_stretch(st, k, is_move, dt_us, index, par)
         while cursor != NONE:
             gate_m = gate_place(index, step, cursor)
             if gate_m > step.at_m[j + 1] and j < m - 2:

@@ -1,29 +1,26 @@
 """Where on the streets a ping may lie: the nearest place on each road within reach."""
 
-from typing import Any, NamedTuple
+from typing import Any
 
 import numpy as np
 
 from stream.geodesy import wrap_e7
 from stream.kernel import kernel
 from stream.network.cells import CELL_E7, HALF_LAT_E7, HALF_LON_E7, find_tile, tile_key
-from stream.network.model import F64, I32
 from stream.network.routes import StreetIndex
 
 MAX_ROADS = 10  # nearest roads looked at
 
 
-class Places(NamedTuple):
-    """Room for the candidates of one ping."""
-
-    road: I32  # [MAX_ROADS]
-    at_m: F64  # chainage along the drawing
-    square_m2: F64  # squared distance from the ping
-
-
-def new_places() -> Places:
-    """Make room for the candidates of one ping."""
-    return Places(np.zeros(MAX_ROADS, np.int32), np.zeros(MAX_ROADS), np.zeros(MAX_ROADS))
+PLACES = np.dtype(
+    [
+        ("road", np.int32, (MAX_ROADS,)),
+        ("at_m", np.float64, (MAX_ROADS,)),  # chainage along the drawing
+        ("square_m2", np.float64, (MAX_ROADS,)),  # squared distance from the ping
+    ],
+    align=True,
+)
+Places = Any  # record of PLACES: room for the candidates of one ping
 
 
 @kernel

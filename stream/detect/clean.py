@@ -80,25 +80,43 @@ def place_kernel(
 
 
 @kernel
+def scale_at(index: StreetIndex, lat: Any) -> tuple[float, float]:
+    """Give the metres of 1e-7 degree of longitude and of latitude at a latitude's row of cells."""
+    row: Any = (np.int64(lat) + HALF_LAT_E7) // CELL_E7 - index.row_first
+    row = min(max(row, 0), index.row_scale.shape[0] - 1)
+    return index.row_scale[row, 0], index.row_scale[row, 1]
+
+
+@kernel
+def square_m2(k_lon: float, k_lat: float, lon1: Any, lat1: Any, lon2: Any, lat2: Any) -> float:
+    """Give the squared distance of two points at a given scale."""
+    d_lon: Any = np.int64(lon2) - lon1
+    dx = wrap_e7(d_lon) * k_lon
+    dy = (np.int64(lat2) - lat1) * k_lat
+    return dx * dx + dy * dy
+
+
+@kernel
 def apart_m(index: StreetIndex, lon1: Any, lat1: Any, lon2: Any, lat2: Any) -> float:
     """Give the distance of two points in metres, scaled at the first one's row of cells (flat)."""
-    row: Any = (np.int64(lat1) + HALF_LAT_E7) // CELL_E7 - index.row_first
-    row = min(max(row, 0), index.row_scale.shape[0] - 1)
-    d_lon: Any = np.int64(lon2) - lon1
-    dx = wrap_e7(d_lon) * index.row_scale[row, 0]
-    dy = (np.int64(lat2) - lat1) * index.row_scale[row, 1]
-    return math.sqrt(dx * dx + dy * dy)
+    k_lon, k_lat = scale_at(index, lat1)
+    return math.sqrt(square_m2(k_lon, k_lat, lon1, lat1, lon2, lat2))
 
 
 @kernel
-def is_reachable(distance_m: float, dt_us: int, max_speed_mps: float, slack_m: float) -> bool:
-    """Tell whether a vehicle can have come so far in that time."""
-    return distance_m <= slack_m + max_speed_mps * dt_us * 1e-6
+def is_reachable(square: float, dt_us: int, par: Any) -> bool:
+    """Tell whether a vehicle can have come so far (squared metres) in that time."""
+    limit_m = par.jump_slack_m + par.max_speed_mps * dt_us * 1e-6
+    return square <= limit_m * limit_m
 
 
 @kernel
-def judge(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, par: Any) -> int:
+def judge(st: Any, t_us: int, lon: int, lat: int, k_lon: float, k_lat: float, par: Any) -> int:
     """Decide on a placed ping from the last good one and the held one; changes nothing.
+
+    Parameters
+    ----------
+    k_lon, k_lat : float    metres of 1e-7 degree at the ping
 
     Returns
     -------
@@ -113,18 +131,10 @@ def judge(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, par: Any) 
         same_lon = st.held_lon if st.is_held else st.lon
         same_lat = st.held_lat if st.is_held else st.lat
         return DUPLICATE if lon == same_lon and lat == same_lat else SAME_TIME_ELSEWHERE
-    from_last = is_reachable(
-        apart_m(index, st.lon, st.lat, lon, lat), t_us - st.t_us, par.max_speed_mps, par.jump_slack_m
-    )
+    from_last = is_reachable(square_m2(k_lon, k_lat, st.lon, st.lat, lon, lat), t_us - st.t_us, par)
     if not st.is_held:
         return GOOD if from_last else HOLD
     if from_last:
         return DROP_HELD
-    held_m = apart_m(index, st.held_lon, st.held_lat, lon, lat)
-    from_held = is_reachable(
-        held_m,
-        t_us - st.held_us,
-        par.max_speed_mps,
-        par.jump_slack_m,
-    )
-    return HELD_ELSEWHERE if from_held else REPLACE_HELD
+    square = square_m2(k_lon, k_lat, st.held_lon, st.held_lat, lon, lat)
+    return HELD_ELSEWHERE if is_reachable(square, t_us - st.held_us, par) else REPLACE_HELD

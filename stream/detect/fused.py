@@ -16,10 +16,11 @@ from stream.detect.clean import (
     HOLD,
     IMPOSSIBLE_SPEED,
     REPLACE_HELD,
-    apart_m,
     judge,
+    scale_at,
+    square_m2,
 )
-from stream.detect.passages import N_PASSAGE, N_SECTION, N_TRIP, N_UNFINISHED, N_USED, Out
+from stream.detect.passages import BLOCK_ROWS, N_PASSAGE, N_SECTION, N_TRIP, N_UNFINISHED, N_USED, Out
 from stream.detect.settle import Work, anchor_at, end_trip, make_room
 from stream.detect.trips import (
     END_CLOSE,
@@ -43,7 +44,9 @@ RESERVE = 4096  # rows of output that one ping can't exceed
 
 
 @spliced
-def judge_trip(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, par: Any) -> int:
+def judge_trip(
+    st: Any, t_us: int, lon: int, lat: int, k_lon: float, k_lat: float, index: StreetIndex, par: Any
+) -> int:
     """Decide whether a good ping ends the open trip.
 
     Returns
@@ -54,7 +57,7 @@ def judge_trip(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, par: 
         return NONE
     if t_us - st.t_us > par.max_gap_us:
         return END_GAP
-    if end_stay(st, t_us, lon, lat, index, par.dwell_radius_m):
+    if end_stay(st, t_us, lon, lat, k_lon, k_lat, par.dwell_radius_m):
         return NONE
     stayed_us = t_us - st.stay_us
     if stayed_us < par.dwell_us:
@@ -78,8 +81,9 @@ def take(
     out: Out,
 ) -> None:
     """Take a good ping; `ending` END_JUMP or END_CLOSE ends the trip first (then without a ping)."""
+    k_lon, k_lat = scale_at(index, lat)
     if ending == NONE:
-        ending = judge_trip(st, t_us, lon, lat, index, par)
+        ending = judge_trip(st, t_us, lon, lat, k_lon, k_lat, index, par)
     stays = ending in (END_DWELL, TIMEOUT)
     if ending != NONE and st.mode == MOVING:
         if stays:
@@ -91,7 +95,7 @@ def take(
         st.mode = IDLE
     if ending != END_CLOSE:
         out.n[N_USED] += 1
-        if st.mode == PARKED and apart_m(index, st.stay_lon, st.stay_lat, lon, lat) > par.dwell_radius_m:
+        if st.mode == PARKED and end_stay(st, t_us, lon, lat, k_lon, k_lat, par.dwell_radius_m):
             st.mode = IDLE
         if st.mode == IDLE:
             begin_trip(st, t_us, lon, lat)
@@ -99,7 +103,9 @@ def take(
             st.n_pings += 1
             if is_full(st):
                 make_room(st, vehicle, index, par, work, out)
-            if keep_ping(st, t_us, lon, lat, index, par.keep_m) and is_anchor(st, index, par.anchor_m):
+            if keep_ping(st, t_us, lon, lat, k_lon, k_lat, par.keep_m) and is_anchor(
+                st, k_lon, k_lat, par.anchor_m
+            ):
                 anchor_at(st, vehicle, st.n_kept - 1, index, par, work, out)
         st.t_us = t_us
         st.lon = lon
@@ -108,13 +114,24 @@ def take(
 
 
 @spliced
-def is_anchor(st: Any, index: StreetIndex, anchor_m: float) -> bool:
+def is_anchor(st: Any, k_lon: float, k_lat: float, anchor_m: float) -> bool:
     """Tell whether the newest kept ping is to be matched."""
     k = st.n_kept - 1
     a = st.anchor
     if a == NONE or k - a >= MAX_WAIT:
         return True
-    return apart_m(index, st.kept_lon[a], st.kept_lat[a], st.kept_lon[k], st.kept_lat[k]) >= anchor_m
+    square = square_m2(k_lon, k_lat, st.kept_lon[a], st.kept_lat[a], st.kept_lon[k], st.kept_lat[k])
+    return square >= anchor_m * anchor_m
+
+
+@spliced
+def drives_off(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, par: Any) -> bool:
+    """Tell whether a parked vehicle leaves its place, seen not long before."""
+    if st.mode != PARKED or t_us - st.t_us > par.max_gap_us:
+        return False
+    k_lon, k_lat = scale_at(index, lat)
+    radius_m = par.dwell_radius_m
+    return square_m2(k_lon, k_lat, st.stay_lon, st.stay_lat, lon, lat) > radius_m * radius_m
 
 
 @kernel
@@ -130,8 +147,8 @@ def pass_kernel(
     end: int,
     parameters: NDArray[Any],
     states: NDArray[Any],
-    work: Work,
-    out: Out,
+    works: NDArray[Any],
+    outs: NDArray[Any],
 ) -> int:
     """Take pings `order[begin:end]`, grouped by vehicle, in order within each.
 
@@ -144,16 +161,19 @@ def pass_kernel(
     order : int32[n]
     parameters : PARAMETERS[1]
     states : STATE[v]        changed
-    out : rows are added from its counters on
+    works : WORK[1]
+    outs : OUT[1]            rows are added from its counters on
 
     Returns
     -------
-    at : int    `end`, or where to go on once `out` has more room
+    at : int    `end`, or where to go on with an empty block of output
 
     Source: DESIGN.md section 5.
     """
     par = parameters[0]
-    room = min(out.passage.shape[0], out.trip.shape[0]) - RESERVE
+    work = works[0]
+    out = outs[0]
+    room = BLOCK_ROWS - RESERVE
     for i in range(begin, end):
         if max(out.n[N_PASSAGE], out.n[N_SECTION], out.n[N_UNFINISHED], out.n[N_TRIP]) > room:
             return i
@@ -167,7 +187,8 @@ def pass_kernel(
         if reason[p] == CLOSE:
             said = DROP_HELD if st.is_held else GOOD
         else:
-            said = judge(st, t_us[p], lon[p], lat[p], index, par)
+            k_lon, k_lat = scale_at(index, lat[p])
+            said = judge(st, t_us[p], lon[p], lat[p], k_lon, k_lat, par)
         if said >= 0:
             out.dropped[said] += 1
             continue
@@ -179,11 +200,21 @@ def pass_kernel(
             st.held_lon = lon[p]
             st.held_lat = lat[p]
             continue
-        for turn in range(0 if said == HELD_ELSEWHERE else 1, 2):
-            at_us = t_us[p] if turn else st.held_us
-            at_lon = lon[p] if turn else st.held_lon
-            at_lat = lat[p] if turn else st.held_lat
-            ending = NONE if turn else END_JUMP
+        drives = False
+        if said in (GOOD, DROP_HELD) and reason[p] != CLOSE:
+            drives = drives_off(st, t_us[p], lon[p], lat[p], index, par)
+        if drives:
+            st.mode = IDLE
+            out.n[N_USED] -= 1  # the ping before is taken once more: the trip begins where it stood
+        for turn in range(0 if drives or said == HELD_ELSEWHERE else 1, 2):
+            at_us = t_us[p]
+            at_lon = lon[p]
+            at_lat = lat[p]
+            if turn == 0:
+                at_us = st.t_us if drives else st.held_us
+                at_lon = st.lon if drives else st.held_lon
+                at_lat = st.lat if drives else st.held_lat
+            ending = END_JUMP if turn == 0 and not drives else NONE
             if reason[p] == CLOSE:
                 ending = END_CLOSE
             take(st, v, at_us, at_lon, at_lat, ending, index, par, work, out)

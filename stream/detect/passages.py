@@ -4,18 +4,18 @@ Guarantee: the time between a trip's first and last gate is split without rest i
 unfinished passages and other time, in integer microseconds.
 """
 
-from typing import Any, NamedTuple
+from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from stream.detect.carry import OTHER, PASSAGE, SECTION, UNFINISHED
+from stream.detect.records import DROP_REASONS
 from stream.detect.records import PASSAGE as PASSAGE_ROW
 from stream.detect.records import SECTION as SECTION_ROW
 from stream.detect.records import TRIP as TRIP_ROW
 from stream.detect.records import UNFINISHED as UNFINISHED_ROW
 from stream.kernel import kernel
-from stream.network.model import I64, NONE
+from stream.network.model import NONE
 from stream.network.routes import StreetIndex
 
 # Reasons of an unfinished passage, as in `records.UNFINISHED_REASONS`.
@@ -24,27 +24,19 @@ BY_GAP, BY_DWELL, BY_BREAK, BY_CLOSE, BY_TIMEOUT, BY_TURN = range(6)
 N_PASSAGE, N_SECTION, N_UNFINISHED, N_TRIP, N_USED = range(5)
 
 
-class Out(NamedTuple):
-    """A thread's output; the caller keeps room in it."""
-
-    passage: NDArray[Any]
-    section: NDArray[Any]
-    unfinished: NDArray[Any]
-    trip: NDArray[Any]
-    n: I64  # [5] rows of each kind, pings used
-    dropped: I64  # by reason
-
-
-def new_out(rows: int, n_reasons: int) -> Out:
-    """Make room for so many rows of each kind."""
-    return Out(
-        np.zeros(rows, PASSAGE_ROW),
-        np.zeros(rows, SECTION_ROW),
-        np.zeros(rows, UNFINISHED_ROW),
-        np.zeros(rows, TRIP_ROW),
-        np.zeros(5, np.int64),
-        np.zeros(n_reasons, np.int64),
-    )
+BLOCK_ROWS = 12_288  # rows of each kind in a block of output
+OUT = np.dtype(
+    [
+        ("n", np.int64, (5,)),  # rows of each kind, pings used
+        ("dropped", np.int64, (len(DROP_REASONS),)),
+        ("passage", PASSAGE_ROW, (BLOCK_ROWS,)),
+        ("section", SECTION_ROW, (BLOCK_ROWS,)),
+        ("unfinished", UNFINISHED_ROW, (BLOCK_ROWS,)),
+        ("trip", TRIP_ROW, (BLOCK_ROWS,)),
+    ],
+    align=True,
+)
+Out = Any  # record of OUT: a thread's output
 
 
 @kernel

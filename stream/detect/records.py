@@ -88,6 +88,11 @@ TRIP = np.dtype(
 )
 
 
+def new_record(dtype: np.dtype[Any]) -> Any:
+    """Make one zeroed record whose fields are attributes; kernels take it by reference."""
+    return np.zeros(1, dtype).view(np.recarray)[0]
+
+
 @dataclass(frozen=True)
 class Found:
     """What one chunk gave: structured arrays of the dtypes above, and counts.

@@ -13,16 +13,15 @@ from numpy.typing import NDArray
 
 from stream.config import Settings
 from stream.detect.clean import place_kernel
-from stream.detect.fused import CLOSE, RESERVE, group_kernel, pass_kernel
+from stream.detect.fused import CLOSE, group_kernel, pass_kernel
 from stream.detect.parameters import parameters
-from stream.detect.passages import N_PASSAGE, N_SECTION, N_TRIP, N_UNFINISHED, N_USED, Out, new_out
-from stream.detect.records import DROP_REASONS, Found
-from stream.detect.settle import Work, new_work
+from stream.detect.passages import N_PASSAGE, N_SECTION, N_TRIP, N_UNFINISHED, N_USED, OUT
+from stream.detect.records import Found
+from stream.detect.settle import new_work
 from stream.network.model import I32, I64, Streets
 from stream.network.routes import build_index
 
 _Pings = tuple[I32, I64, I32, I32, NDArray[np.int8], I32]
-_ROWS_EACH = 16  # pings per row of output that room is made for at first
 _SHARES = 4  # pieces a thread takes, so that none waits long for another
 
 
@@ -46,7 +45,7 @@ class Detector:
         )
         self._parameters = parameters(settings)
         self._threads = threads or os.cpu_count() or 1
-        self._works: list[Work] = []
+        self._rooms: list[tuple[NDArray[Any], NDArray[Any]]] = []
 
     def feed(
         self,
@@ -118,20 +117,20 @@ class Detector:
             list(pool.map(lambda part: task(*part), parts))
 
     def _gather(self, pings: _Pings, states: NDArray[Any], parts: list[tuple[int, int]]) -> Found:
-        def run(begin: int, stop: int, out: Out, work: Work) -> int:
-            return pass_kernel(*pings, self._index, begin, stop, self._parameters, states, work, out)
-
-        while len(self._works) < min(self._threads, max(len(parts), 1)):
-            self._works.append(new_work())
-        free = list(self._works)
-        done: list[Any] = [None] * len(parts)
+        while len(self._rooms) < min(self._threads, max(len(parts), 1)):
+            self._rooms.append((new_work(), np.zeros(1, OUT)))
+        free = list(self._rooms)
+        done: list[list[Found]] = [[] for _ in parts]
 
         def task(i: int) -> None:
-            work = free.pop()
-            try:
-                done[i] = _fill(run, *parts[i], work)
-            finally:
-                free.append(work)
+            work, out = free.pop()
+            at, end = parts[i]
+            while at < end:
+                out["n"] = 0
+                out["dropped"] = 0
+                at = pass_kernel(*pings, self._index, at, end, self._parameters, states, work, out)
+                done[i].append(_taken(out[0]))
+            free.append((work, out))
 
         if len(parts) < 2 or self._threads == 1:
             for i in range(len(parts)):
@@ -139,7 +138,7 @@ class Detector:
         else:
             with ThreadPoolExecutor(self._threads) as pool:
                 list(pool.map(task, range(len(parts))))
-        return _join([out for outs in done for out in outs])
+        return _join([found for part in done for found in part])
 
 
 def _even_ends(n: int, parts: int) -> NDArray[np.int64]:
@@ -151,25 +150,28 @@ def _even(n: int, parts: int) -> list[tuple[int, int]]:
     return list(itertools.pairwise(ends))
 
 
-def _fill(run: Any, begin: int, stop: int, work: Work) -> list[Out]:
-    """Run one part to its end, with as many outputs as it takes."""
-    outs: list[Out] = []
-    at = begin
-    while at < stop or not outs:
-        out = new_out(RESERVE + 64 + (stop - at) // _ROWS_EACH, len(DROP_REASONS))
-        at = run(at, stop, out, work)
-        outs.append(out)
-    return outs
-
-
-def _join(outs: list[Out]) -> Found:
-    """Put the outputs of all parts after one another; each part is a range of vehicles, in their order."""
-    parts = [new_out(0, len(DROP_REASONS)), *outs]
+def _taken(out: Any) -> Found:
+    """Copy the rows out of a block."""
+    n = out["n"]
     return Found(
-        np.concatenate([p.passage[: p.n[N_PASSAGE]] for p in parts]),
-        np.concatenate([p.section[: p.n[N_SECTION]] for p in parts]),
-        np.concatenate([p.unfinished[: p.n[N_UNFINISHED]] for p in parts]),
-        np.concatenate([p.trip[: p.n[N_TRIP]] for p in parts]),
-        np.add.reduce([p.dropped for p in parts]).astype(np.int64),
-        sum(int(p.n[N_USED]) for p in parts),
+        out["passage"][: n[N_PASSAGE]].copy(),
+        out["section"][: n[N_SECTION]].copy(),
+        out["unfinished"][: n[N_UNFINISHED]].copy(),
+        out["trip"][: n[N_TRIP]].copy(),
+        out["dropped"].copy(),
+        int(n[N_USED]),
+    )
+
+
+def _join(parts: list[Found]) -> Found:
+    """Put the outputs of all parts after one another; each part is a range of vehicles, in their order."""
+    nothing = _taken(np.zeros(1, OUT)[0])
+    every = [nothing, *parts]
+    return Found(
+        np.concatenate([p.passages for p in every]),
+        np.concatenate([p.sections for p in every]),
+        np.concatenate([p.unfinished for p in every]),
+        np.concatenate([p.trips for p in every]),
+        np.add.reduce([p.dropped for p in every]),
+        sum(p.n_used for p in every),
     )

@@ -4,13 +4,12 @@ Guarantee: a row depends on its edge and reach alone, never on what was asked be
 the same whatever the memory holds. Each thread has a memory of its own.
 """
 
-from typing import Any, NamedTuple
+from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from stream.kernel import kernel, spliced
-from stream.network.model import F64, I32, I64, NONE
+from stream.network.model import F64, I32, NONE
 from stream.network.routes import StreetIndex
 
 ROUTE = np.dtype(
@@ -30,41 +29,45 @@ TURN_M = 12.0  # metres that a log unit of turn cost weighs in choosing among ro
 _GOLDEN = 0x9E3779B1
 
 
-class Routes(NamedTuple):
-    """A thread's memory of rows, and the room to search in."""
+def routes_dtype(n_rows: int, n_routes: int) -> np.dtype[Any]:
+    """Lay out a thread's memory of rows, and the room to search in.
 
-    row_key: I64  # [_ROWS] 2 * edge + is_long; -1 empty
-    row_start: I32
-    row_size: I32  # power of two
-    route: NDArray[Any]  # ROUTE[_MEMORY]
-    used: I64  # [3]: routes used, rows used, searches made
-    label_edge: I32  # [MAX_LABELS]
-    label_before: I32
-    label_m: F64
-    label_cost: F64
-    label_done: NDArray[np.uint8]
-    label_at: I32  # [_LABEL_ROOM] hash of edges to labels
-    heap_rank: F64  # [4 * MAX_LABELS]
-    heap_label: I32
-
-
-def new_routes() -> Routes:
-    """Make an empty memory."""
-    return Routes(
-        np.full(_ROWS, NONE, np.int64),
-        np.zeros(_ROWS, np.int32),
-        np.zeros(_ROWS, np.int32),
-        np.zeros(_MEMORY, ROUTE),
-        np.zeros(3, np.int64),
-        np.zeros(MAX_LABELS, np.int32),
-        np.zeros(MAX_LABELS, np.int32),
-        np.zeros(MAX_LABELS),
-        np.zeros(MAX_LABELS),
-        np.zeros(MAX_LABELS, np.uint8),
-        np.full(_LABEL_ROOM, NONE, np.int32),
-        np.zeros(4 * MAX_LABELS),
-        np.zeros(4 * MAX_LABELS, np.int32),
+    Parameters
+    ----------
+    n_rows
+        Slots for rows, a power of two; half of them are used at most.
+    n_routes
+        Routes remembered; more than the largest row takes.
+    """
+    return np.dtype(
+        [
+            ("row_key", np.int64, (n_rows,)),  # 2 * edge + is_long; -1 empty
+            ("row_start", np.int32, (n_rows,)),
+            ("row_size", np.int32, (n_rows,)),  # power of two
+            ("route", ROUTE, (n_routes,)),
+            ("used", np.int64, (3,)),  # routes used, rows used, searches made
+            ("label_edge", np.int32, (MAX_LABELS,)),
+            ("label_before", np.int32, (MAX_LABELS,)),
+            ("label_m", np.float64, (MAX_LABELS,)),
+            ("label_cost", np.float64, (MAX_LABELS,)),
+            ("label_done", np.uint8, (MAX_LABELS,)),
+            ("label_at", np.int32, (_LABEL_ROOM,)),  # hash of edges to labels
+            ("heap_rank", np.float64, (4 * MAX_LABELS,)),
+            ("heap_label", np.int32, (4 * MAX_LABELS,)),
+        ],
+        align=True,
     )
+
+
+ROUTES = routes_dtype(_ROWS, _MEMORY)
+Routes = Any  # record of ROUTES
+
+
+def forget(routes: Routes) -> None:
+    """Empty a memory."""
+    routes["row_key"] = NONE
+    routes["label_at"] = NONE
+    routes["used"] = 0
 
 
 @kernel

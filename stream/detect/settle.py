@@ -3,12 +3,13 @@
 Guarantee: what a commit writes depends on the record and the streets alone, not on when the output is read.
 """
 
-from typing import Any, NamedTuple
+from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from stream.detect.advance import advance
-from stream.detect.candidates import Places, new_places
+from stream.detect.candidates import PLACES
 from stream.detect.carry import MAX_COLUMNS, OTHER, UNFINISHED
 from stream.detect.follow import (
     ADDED,
@@ -30,30 +31,35 @@ from stream.detect.passages import (
     leave_unfinished,
     write_trip,
 )
-from stream.detect.room import Column, new_column
-from stream.detect.search import Routes, new_routes
-from stream.detect.step import Step, new_step
+from stream.detect.room import COLUMN
+from stream.detect.search import ROUTES, forget
+from stream.detect.step import STEP
 from stream.detect.trips import END_CLOSE, END_DWELL, END_JUMP, TIMEOUT, drop_kept, is_full, rest
 from stream.kernel import spliced
-from stream.network.model import I32, NONE
+from stream.network.model import NONE
 from stream.network.routes import StreetIndex
 
 MAX_SKIPPED = 3  # anchors left out before the path is broken off
 
 
-class Work(NamedTuple):
-    """A thread's scratch room; nothing in it outlives a ping, save the remembered routes."""
+WORK = np.dtype(
+    [
+        ("routes", ROUTES),
+        ("places", PLACES),
+        ("column", COLUMN),
+        ("step", STEP),
+        ("chain", np.int32, (MAX_COLUMNS,)),
+    ],
+    align=True,
+)
+Work = Any  # record of WORK: a thread's scratch room; only the remembered routes outlive a ping
 
-    routes: Routes
-    places: Places
-    column: Column
-    step: Step
-    chain: I32  # [MAX_COLUMNS]
 
-
-def new_work() -> Work:
-    """Make a thread's scratch room."""
-    return Work(new_routes(), new_places(), new_column(), new_step(), np.zeros(MAX_COLUMNS, np.int32))
+def new_work() -> NDArray[Any]:
+    """Make a thread's scratch room: one record."""
+    work = np.zeros(1, WORK)
+    forget(work[0]["routes"])
+    return work
 
 
 @spliced

@@ -3,7 +3,7 @@
 Guarantee: places along a step never run backward, and no gate is passed twice without leaving its edge.
 """
 
-from typing import Any, NamedTuple
+from typing import Any
 
 import numpy as np
 
@@ -15,34 +15,23 @@ from stream.detect.search import MAX_LABELS, SHORT_M, Routes, find_route, row_ke
 from stream.geodesy import wrap_e7
 from stream.kernel import kernel, spliced
 from stream.network.cells import CELL_E7, HALF_LAT_E7
-from stream.network.model import F64, I32, I64, NONE
+from stream.network.model import NONE
 from stream.network.routes import StreetIndex
 
-
-class Step(NamedTuple):
-    """Room for one step."""
-
-    edge: I32  # [MAX_LABELS + 2] pieces in order
-    from_m: F64  # chainage on the edge
-    to_m: F64
-    start_m: F64  # metres along the step where the piece starts
-    route: I32  # [MAX_LABELS] scratch: the edges between, last first
-    t_us: I64  # [2 * MAX_KEPT] arrival and leave of each kept ping, in turn
-    at_m: F64  # metres along the step
-
-
-def new_step() -> Step:
-    """Make room for one step."""
-    n = MAX_LABELS + 2
-    return Step(
-        np.zeros(n, np.int32),
-        np.zeros(n),
-        np.zeros(n),
-        np.zeros(n),
-        np.zeros(n, np.int32),
-        np.zeros(2 * MAX_KEPT, np.int64),
-        np.zeros(2 * MAX_KEPT),
-    )
+MAX_PIECES = MAX_LABELS + 2
+STEP = np.dtype(
+    [
+        ("edge", np.int32, (MAX_PIECES,)),  # pieces in order
+        ("from_m", np.float64, (MAX_PIECES,)),  # chainage on the edge
+        ("to_m", np.float64, (MAX_PIECES,)),
+        ("start_m", np.float64, (MAX_PIECES,)),  # metres along the step where the piece starts
+        ("route", np.int32, (MAX_PIECES,)),  # scratch: the edges between, last first
+        ("t_us", np.int64, (2 * MAX_KEPT,)),  # arrival and leave of each kept ping, in turn
+        ("at_m", np.float64, (2 * MAX_KEPT,)),  # metres along the step
+    ],
+    align=True,
+)
+Step = Any  # record of STEP: room for one step
 
 
 @kernel
@@ -62,6 +51,7 @@ def lay_pieces(
     to: int,
     to_m: float,
     chord_m: float,
+    dt_us: int,
     index: StreetIndex,
     par: Any,
     routes: Routes,
@@ -80,7 +70,7 @@ def lay_pieces(
     slot = NONE
     if not (to == e and to_m >= at_m - par.back_m):
         slot = row_kernel(index, e, is_long, par.reach_m if is_long else SHORT_M, routes)
-    _, kind = transition(index, e, at_m, to, to_m, chord_m, slot, routes, par)
+    _, kind = transition(index, e, at_m, to, to_m, chord_m, dt_us, slot, routes, par)
     if kind == SAME_EDGE:
         return add_piece(step, 0, e, reach, max(reach, to_m))
     if kind == TURNED:

@@ -3,7 +3,7 @@
 from typing import Any
 
 from stream.detect.carry import IDLE, MAX_KEPT, MOVING, OTHER
-from stream.detect.clean import apart_m
+from stream.detect.clean import square_m2
 from stream.kernel import kernel
 from stream.network.model import NONE
 from stream.network.routes import StreetIndex
@@ -47,9 +47,9 @@ def begin_trip(st: Any, t_us: int, lon: int, lat: int) -> None:
 
 
 @kernel
-def end_stay(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, radius_m: float) -> bool:
+def end_stay(st: Any, t_us: int, lon: int, lat: int, k_lon: float, k_lat: float, radius_m: float) -> bool:
     """Tell whether a ping lies outside the place where the vehicle stayed; if so, a new stay begins there."""
-    if apart_m(index, st.stay_lon, st.stay_lat, lon, lat) <= radius_m:
+    if square_m2(k_lon, k_lat, st.stay_lon, st.stay_lat, lon, lat) <= radius_m * radius_m:
         return False
     st.stay_us = t_us
     st.stay_lon = lon
@@ -68,10 +68,10 @@ def is_inside(st: Any, index: StreetIndex) -> bool:
 
 
 @kernel
-def keep_ping(st: Any, t_us: int, lon: int, lat: int, index: StreetIndex, keep_m: float) -> bool:
+def keep_ping(st: Any, t_us: int, lon: int, lat: int, k_lon: float, k_lat: float, keep_m: float) -> bool:
     """Keep a ping, or let it extend the stay at the last kept one; True where it was kept as a new one."""
     k = st.n_kept - 1
-    if k >= 0 and apart_m(index, st.kept_lon[k], st.kept_lat[k], lon, lat) < keep_m:
+    if k >= 0 and square_m2(k_lon, k_lat, st.kept_lon[k], st.kept_lat[k], lon, lat) < keep_m * keep_m:
         step_ms = (t_us - st.leave_us[k]) // 1000
         if step_ms > st.kept_step_ms[k]:
             st.kept_step_ms[k] = step_ms

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 
 from stream.detect.candidates import project_kernel
-from stream.detect.room import Column
+from stream.detect.room import MAX_CANDIDATES, Column
 from stream.geodesy import wrap_e7
 from stream.kernel import kernel
 from stream.network.cells import CELL_E7, HALF_LAT_E7
@@ -48,7 +48,7 @@ def look_at(
     for c in range(n):
         if column.edge[c] == e:
             return c, n
-    if n == column.edge.shape[0]:
+    if n == MAX_CANDIDATES:
         return NONE, n
     at_m, square = project_on_edge(index, e, lon, lat, k_lon, k_lat)
     column.edge[n] = e

@@ -107,6 +107,7 @@ def split_trips(
             trip = None
 
     last_us = -1
+    last: Fix | None = None
     for number, run in enumerate(runs):
         for place, fix in enumerate(run):
             if number and place == 0:
@@ -114,11 +115,13 @@ def split_trips(
                 parked = None
             elif trip is not None and fix[0] - last_us > rule.max_gap_s * 1e6:
                 end(last_us, "gap")
-            last_us = fix[0]
+            before, last, last_us = last, fix, fix[0]
             if parked is not None:
                 if apart_m(parked, fix[1]) <= rule.dwell_radius_m:
                     continue
                 parked = None
+                if before is not None and fix[0] - before[0] <= rule.max_gap_s * 1e6:
+                    trip = Trip([before], before)  # it drove off from where it was last seen
             if trip is None:
                 trip = Trip([fix], fix)
                 continue

@@ -13,7 +13,7 @@ from itertools import chain, pairwise
 from stream.config import Settings
 from stream.detect.candidates import MAX_ROADS
 from stream.detect.carry import MAX_SURVIVORS
-from stream.detect.follow import SHORT_CHORD_M
+from stream.detect.follow import DETOUR_M, DETOUR_SHARE, FAST_MPS, FAST_SHARE, FAST_SLACK_S, SHORT_CHORD_M
 from stream.detect.fused import MAX_WAIT
 from stream.detect.search import SHORT_M, TURN_M
 from stream.network.model import Streets
@@ -93,7 +93,7 @@ class Ways:
         share = 1.0 - share if spot[0] % 2 else share
         return a[0] + share * (b[0] - a[0]), a[1] + share * (b[1] - a[1])
 
-    def step(self, a: Spot, b: Spot, chord_m: float) -> tuple[float, str]:
+    def step(self, a: Spot, b: Spot, chord_m: float, dt_us: int) -> tuple[float, str]:
         """Price the way from one place to another: log units, and same, turned or routed."""
         follow = self.settings.follow
         scale = follow.beta_m + follow.beta_share * chord_m
@@ -105,43 +105,52 @@ class Ways:
             ways.append((follow.reverse_cost + abs(abs(left - b[1]) - chord_m) / scale, "turned"))
         route = self.routes(a[0], self.reach_m(chord_m)).get(b[0])
         if route:
-            ways.append((route[1] + abs(left + route[0] + b[1] - chord_m) / scale, "routed"))
+            metres = left + route[0] + b[1]
+            limit = max(float(self.streets.edge_speed_mps[e]) for e in (a[0], b[0]))
+            can = FAST_SHARE * max(FAST_MPS, limit) * (dt_us * 1e-6 + FAST_SLACK_S)
+            if metres <= can and metres <= DETOUR_SHARE * chord_m + DETOUR_M:
+                ways.append((route[1] + abs(metres - chord_m) / scale, "routed"))
         return min(ways)
 
     def reach_m(self, chord_m: float) -> float:
         """Give how far routes are searched for a step."""
         return SHORT_M if chord_m <= SHORT_CHORD_M else self.settings.follow.route_reach_m
 
-    def anchors(self, fixes: Sequence[Fix]) -> list[Fix]:
-        """Give the pings that are matched: some metres apart, or after many kept ones, and the last kept."""
+    def anchors(self, fixes: Sequence[Fix]) -> list[tuple[Fix, int]]:
+        """Give the pings that are matched, each with the time it was left: some metres apart, or after many
+        kept ones, and the last kept.
+        """
         follow = self.settings.follow
         kept: list[Fix] = []
+        left_us: list[int] = []
         chosen: list[int] = []
         for fix in fixes:
             if kept and apart_m(kept[-1][1], fix[1]) < follow.keep_m:
+                left_us[-1] = fix[0]
                 continue
             kept.append(fix)
+            left_us.append(fix[0])
             k = len(kept) - 1
             far = not chosen or apart_m(kept[chosen[-1]][1], fix[1]) >= follow.anchor_m
             if far or k - chosen[-1] >= MAX_WAIT:
                 chosen.append(k)
         if chosen and chosen[-1] != len(kept) - 1:
             chosen.append(len(kept) - 1)
-        return [kept[k] for k in chosen]
+        return [(kept[k], left_us[k]) for k in chosen]
 
-    def match(self, fixes: Sequence[Fix]) -> list[tuple[Fix, Spot]]:
+    def match(self, fixes: Sequence[Fix]) -> list[tuple[Fix, int, Spot]]:
         """Give the likeliest place of each anchor of a trip, those without a way left out."""
         follow = self.settings.follow
-        columns: list[tuple[Fix, list[tuple[float, Spot, int]]]] = []
-        for fix in self.anchors(fixes):
+        columns: list[tuple[Fix, int, list[tuple[float, Spot, int]]]] = []
+        for fix, left_us in self.anchors(fixes):
             priced = []
             for cost, spot in self.spots(fix[1]):
                 if not columns:
                     priced.append((cost, spot, -1))
                     continue
-                before, states = columns[-1]
-                chord = apart_m(before[1], fix[1])
-                ways = [(s[0] + self.step(s[1], spot, chord)[0], k) for k, s in enumerate(states)]
+                before, before_us, states = columns[-1]
+                chord, dt_us = apart_m(before[1], fix[1]), fix[0] - before_us
+                ways = [(s[0] + self.step(s[1], spot, chord, dt_us)[0], k) for k, s in enumerate(states)]
                 best, k = min(ways)
                 if best < math.inf:
                     priced.append((cost + best, spot, k))
@@ -149,21 +158,21 @@ class Ways:
                 continue
             least = min(p[0] for p in priced)
             kept = sorted((p for p in priced if p[0] <= least + follow.prune), key=lambda p: p[0])
-            columns.append((fix, [(p[0] - least, p[1], p[2]) for p in kept[:MAX_SURVIVORS]]))
+            columns.append((fix, left_us, [(p[0] - least, p[1], p[2]) for p in kept[:MAX_SURVIVORS]]))
         out = []
         k = 0
-        for fix, states in reversed(columns):
-            out.append((fix, states[k][1]))
+        for fix, left_us, states in reversed(columns):
+            out.append((fix, left_us, states[k][1]))
             k = states[k][2]
         return out[::-1]
 
-    def path(self, places: Sequence[tuple[Fix, Spot]]) -> list[list[Piece]]:
+    def path(self, places: Sequence[tuple[Fix, int, Spot]]) -> list[list[Piece]]:
         """Give the pieces of each step of the matched path; what was reached is never gone back on."""
         steps = []
-        reach = places[0][1][1] if places else 0.0
-        for (fix_a, a), (fix_b, b) in pairwise(places):
+        reach = places[0][2][1] if places else 0.0
+        for (fix_a, left_us, a), (fix_b, _, b) in pairwise(places):
             chord = apart_m(fix_a[1], fix_b[1])
-            kind, long = self.step(a, b, chord)[1], self.length[a[0]]
+            kind, long = self.step(a, b, chord, fix_b[0] - left_us)[1], self.length[a[0]]
             if kind == "same":
                 pieces = [(a[0], reach, max(reach, b[1]))]
             elif kind == "turned":

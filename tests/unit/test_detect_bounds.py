@@ -9,7 +9,8 @@ import pytest
 
 SCENARIO = """
 import numpy as np
-from stream.detect.search import find_route, new_routes
+from stream.detect.records import new_record
+from stream.detect.search import ROUTES, find_route
 from tests.property.test_detect_garbage import SETTINGS, TOWNS, Detector, check, rambles
 
 for name, town in TOWNS.items():
@@ -17,7 +18,7 @@ for name, town in TOWNS.items():
     n = sum(check(detector, town[0], rambles(name, seed, 600), 4) for seed in range(4))
     print(name, n)
 try:
-    find_route(new_routes(), 1 << 20, 5)
+    find_route(new_record(ROUTES), 1 << 20, 5)
 except IndexError:
     print("checked", 1)
 """

@@ -6,7 +6,9 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from stream.detect.candidates import MAX_ROADS, find_places_kernel, new_places
+from stream.detect.candidates import MAX_ROADS, find_places_kernel
+from stream.detect.candidates import PLACES as ROOM
+from stream.detect.records import new_record
 from stream.network.cells import find_tile, put_tiles, tile_key
 from stream.network.model import Streets
 from stream.network.routes import StreetIndex, build_index
@@ -71,7 +73,7 @@ def lines_of(streets: Streets) -> list[list[Point]]:
 
 def check_point(index: StreetIndex, roads: list[list[Point]], point: Point) -> int:
     """Compare the places of one point with measuring every road; give how many there are."""
-    places = new_places()
+    places = new_record(ROOM)
     n = find_places_kernel(index, *np.array(point, np.int32), RADIUS_M, places)
     plain = places_near(point, roads, RADIUS_M + NEAR_M)
     surely = [road for off, road in plain if off < RADIUS_M - NEAR_M]
@@ -127,7 +129,7 @@ def test_only_the_nearest_roads_are_kept_where_there_are_many(lat: float) -> Non
     origin = (10.0, lat)
     ends = [moved(origin, x, y) for x in np.arange(0.0, 42.0, 3.0).tolist() for y in (-50.0, 50.0)]
     streets = streets_of(ends, [(2 * k, 2 * k + 1) for k in range(len(ends) // 2)])
-    places = new_places()
+    places = new_record(ROOM)
     point = moved(origin, 20.2, 3.0)
     n = find_places_kernel(index_of(streets), *np.array(point, np.int32), RADIUS_M, places)
     assert n == MAX_ROADS
@@ -139,7 +141,7 @@ def test_only_the_nearest_roads_are_kept_where_there_are_many(lat: float) -> Non
 def test_nowhere_near_a_road_there_is_no_place(lon: float, lat: float) -> None:
     """Far from every road, at any corner of the earth, nothing is found and nothing is read amiss."""
     index = index_of(scattered((24.9, 65.0), 3))
-    n = find_places_kernel(index, np.int32(lon * 1e7), np.int32(lat * 1e7), RADIUS_M, new_places())
+    n = find_places_kernel(index, np.int32(lon * 1e7), np.int32(lat * 1e7), RADIUS_M, new_record(ROOM))
     assert n == 0
 
 

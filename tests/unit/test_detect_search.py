@@ -1,10 +1,13 @@
 """Routes between edges: rows against a plain Dijkstra, whatever the memory holds."""
 
+from typing import Any
+
 import numpy as np
 import pytest
 
 from stream.config import load_settings
-from stream.detect.search import SHORT_M, TURN_M, Routes, find_route, new_routes, row_kernel
+from stream.detect.records import new_record
+from stream.detect.search import ROUTES, SHORT_M, TURN_M, Routes, find_route, forget, routes_dtype, row_kernel
 from stream.network.model import NONE, Streets
 from stream.network.routes import StreetIndex, build_index
 from tests.oracle.streets import close_edges, grid_streets, streets_of
@@ -33,15 +36,16 @@ def small_town(seed: int) -> Streets:
     return streets
 
 
+def memory(dtype: np.dtype[Any] = ROUTES) -> Routes:
+    """Make an empty memory."""
+    routes = new_record(dtype)
+    forget(routes)
+    return routes
+
+
 def small_routes(rows: int, routes: int) -> Routes:
     """Make a memory with little room: powers of two."""
-    whole = new_routes()
-    return whole._replace(
-        row_key=np.full(rows, NONE, np.int64),
-        row_start=np.zeros(rows, np.int32),
-        row_size=np.zeros(rows, np.int32),
-        route=np.zeros(routes, whole.route.dtype),
-    )
+    return memory(routes_dtype(rows, routes))
 
 
 def row_of(index: StreetIndex, routes: Routes, source: int, is_long: int, reach_m: float) -> dict[int, tuple]:
@@ -75,7 +79,7 @@ def check_row(ways: Ways, source: int, reach_m: float, row: dict[int, tuple]) ->
 def test_rows_of_random_towns_are_dijkstras(seed: int, reach_m: float) -> None:
     """Targets, least ranks and routes of each row are those of a plain search."""
     streets = small_town(seed)
-    index, ways, routes = index_of(streets), Ways(streets, SETTINGS), new_routes()
+    index, ways, routes = index_of(streets), Ways(streets, SETTINGS), memory()
     n = 0
     for source in range(len(index.edge)):
         row = row_of(index, routes, source, 1, reach_m)
@@ -87,7 +91,7 @@ def test_rows_of_random_towns_are_dijkstras(seed: int, reach_m: float) -> None:
 def test_rows_of_a_grid_with_many_equal_routes_have_the_least_rank() -> None:
     """Where routes tie, either may be given, at the same rank."""
     streets = grid_streets(5, 100.0)
-    index, ways, routes = index_of(streets), Ways(streets, SETTINGS), new_routes()
+    index, ways, routes = index_of(streets), Ways(streets, SETTINGS), memory()
     for source in range(0, len(index.edge), 7):
         check_row(ways, source, 450.5, row_of(index, routes, source, 1, 450.5))
 
@@ -98,7 +102,7 @@ def test_rows_are_the_same_after_the_memory_was_cleared(rows: int, room: int) ->
     streets = small_town(3)
     index = index_of(streets)
     plain = {
-        (source, is_long): row_of(index, new_routes(), source, is_long, reach)
+        (source, is_long): row_of(index, memory(), source, is_long, reach)
         for source in range(0, len(index.edge), 3)
         for is_long, reach in ((0, SHORT_M), (1, 900.0))
     }
@@ -116,7 +120,7 @@ def test_rows_are_the_same_after_the_memory_was_cleared(rows: int, room: int) ->
 
 def test_a_remembered_row_is_not_searched_again() -> None:
     """The second ask of a row costs no search; short and long rows of an edge are two."""
-    index, routes = index_of(grid_streets()), new_routes()
+    index, routes = index_of(grid_streets()), memory()
     for _ in range(3):
         row_kernel(index, 5, 0, SHORT_M, routes)
         row_kernel(index, 5, 1, 2000.0, routes)
@@ -127,7 +131,7 @@ def test_a_dense_town_fills_the_labels_with_real_routes() -> None:
     """With more edges in reach than labels, the row holds 1024, each along a real route."""
     streets = grid_streets(18, 20.0)
     index, ways = index_of(streets), Ways(streets, SETTINGS)
-    row = row_of(index, new_routes(), 300, 1, 2000.0)
+    row = row_of(index, memory(), 300, 1, 2000.0)
     plain = ways.routes(300, 2000.0)
     assert len(plain) > 1024
     assert len(row) == 1024
@@ -144,5 +148,5 @@ def test_a_dense_town_fills_the_labels_with_real_routes() -> None:
 def test_an_edge_without_a_way_on_has_an_empty_row() -> None:
     """From the end of a one-way road that leads nowhere nothing is found, and nothing is read amiss."""
     streets = close_edges(streets_of([(0, 0), (20_000, 0)], [(0, 1)]), [1])
-    index, routes = index_of(streets), new_routes()
+    index, routes = index_of(streets), memory()
     assert row_of(index, routes, 0, 1, 2000.0) == {}

@@ -11,7 +11,8 @@ from hypothesis import strategies as st
 from scipy.interpolate import CubicHermiteSpline
 
 from stream.config import load_settings
-from stream.detect.step import Step, new_step, project_on_step
+from stream.detect.records import new_record
+from stream.detect.step import STEP, Step, project_on_step
 from stream.detect.times import cubic_share, drive_s, gate_error_s, long_share
 from stream.network.routes import build_index
 from tests.grid import lon_lat
@@ -79,7 +80,7 @@ def test_cubic_share_of_even_acceleration_is_exact(v0: float, v1: float, share: 
 
 def laid(edges: list[tuple[int, float, float]]) -> tuple[Step, int]:
     """Lay pieces of edges as a step."""
-    step = new_step()
+    step = new_record(STEP)
     start = 0.0
     for k, (edge, low, high) in enumerate(edges):
         step.edge[k], step.from_m[k], step.to_m[k], step.start_m[k] = edge, low, high, start

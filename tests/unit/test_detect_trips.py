@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 
 from stream.config import load_settings
 from stream.detect.carry import MAX_KEPT, new_states
+from stream.detect.clean import scale_at
 from stream.detect.run import Detector
 from stream.detect.trips import begin_trip, drop_kept, keep_ping
 from stream.network.routes import build_index
@@ -53,12 +54,16 @@ def test_dwell_between_junctions_ends_the_trip_where_it_began(detector: Detector
 
 
 def test_parked_vehicle_begins_a_trip_when_it_leaves_the_place(detector: Detector) -> None:
-    """Parked pings belong to no trip, whatever the silences; the first outside the radius begins one."""
+    """Parked pings belong to no trip, whatever the silences; the last one seen not long before begins one."""
     parked = [*stand((200.0, BLOCK), 0.0, 305.0), row(2000, 210.0, BLOCK), row(9000, 180.0, BLOCK)]
     found = detect(detector, [*parked, row(9010, 236.0, BLOCK), row(9011, 246.0, BLOCK)])
     assert endings(found) == ["dwell", "close"]
-    assert found.trips["trip_start_us"].tolist() == [row(5, 0, 0)[0], row(9010, 0, 0)[0]]
+    assert found.trips["trip_start_us"].tolist() == [row(5, 0, 0)[0], row(9000, 0, 0)[0]]
+    assert found.trips["n_pings"].tolist()[1] == 3
     assert found.n_used == len(parked) + 2
+    later = detect(detector, [*parked, row(9130, 236.0, BLOCK), row(9131, 246.0, BLOCK)])
+    assert later.trips["trip_start_us"].tolist()[1] == row(9130, 0, 0)[0]
+    assert later.n_used == len(parked) + 2
 
 
 def test_waiting_between_gates_is_no_dwell_until_max_passage(detector: Detector) -> None:
@@ -171,7 +176,7 @@ def test_kept_pings_are_stays_of_plain_lists(seed: int) -> None:
     for t_us, place in walk:
         before = int(states["n_kept"][0])
         assert before < MAX_KEPT
-        kept_new.append(keep_ping(states[0], t_us, *place, INDEX, 4.0))
+        kept_new.append(keep_ping(states[0], t_us, *place, *scale_at(INDEX, place[1]), 4.0))
         assert kept_new[-1] == (int(states["n_kept"][0]) == before + 1)
     assert plain_kept(walk, 4.0) == kept_of(states)
     assert sum(kept_new) == len(plain_kept(walk, 4.0)) > 10
@@ -184,7 +189,7 @@ def test_kept_pings_before_the_committed_anchor_are_dropped(n_columns: int, base
     states = new_states(1)
     begin_trip(states[0], walk[0][0], *walk[0][1])
     for t_us, place in walk:
-        keep_ping(states[0], t_us, *place, INDEX, 4.0)
+        keep_ping(states[0], t_us, *place, *scale_at(INDEX, place[1]), 4.0)
     kept = plain_kept(walk, 4.0)
     columns = [base + 2 * k for k in range(n_columns)] if base is not None else []
     states["n_columns"] = n_columns
