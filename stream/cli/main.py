@@ -31,6 +31,12 @@ class _Guarded(TyperGroup):
         except StreamError as err:
             warn(str(err))
             raise typer.Exit(err.exit_code) from err
+        except MemoryError as err:
+            warn(
+                "out of memory; the store stands at its last commit: "
+                "lower run.chunk_rows or run.threads, or give the process more memory"
+            )
+            raise typer.Exit(StreamError.exit_code) from err
         except KeyboardInterrupt as err:
             warn("interrupted; the store stands at its last commit")
             raise typer.Exit(_INTERRUPTED) from err

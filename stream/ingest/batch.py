@@ -9,7 +9,7 @@ from stream.ingest.job import Job
 from stream.ingest.prefetch import prefetch
 from stream.ingest.progress import Progress
 from stream.ingest.usable import Sample, check_usable
-from stream.pings import PingChunk, VehicleBook, open_source
+from stream.pings import PingChunk, VehicleBook, open_source, watched
 from stream.store.batch import BatchWriter
 from stream.store.fleet import Fleet
 from stream.store.ledger import Delivery
@@ -70,9 +70,9 @@ class _Batch:
 
     def read(self) -> None:
         """Read all files, a chunk ahead of detection."""
-        book = VehicleBook()
-        source = open_source(self._delivery.files, self._job.settings)
-        with prefetch(source.chunks(book)) as chunks:
+        book, given = VehicleBook(), self._delivery
+        source = open_source(given.files, self._job.settings)
+        with prefetch(watched(source.chunks(book), given.files, given.stamps, given.digest)) as chunks:
             for chunk in chunks:
                 self._fleet.grow(book.names)
                 self._feed(chunk)

@@ -15,7 +15,7 @@ from stream.ingest.batch import take_in
 from stream.ingest.deliveries import name_batches
 from stream.ingest.job import Job
 from stream.ingest.progress import Tell
-from stream.pings import content_digest, expand
+from stream.pings import content_digest, expand, stamp
 from stream.store import Store
 from stream.store.ledger import Delivery, find_known
 from stream.tally import check_tallies
@@ -73,7 +73,8 @@ def ingest(
         job = Job(store, settings, progress, len(named))
         reports = []
         for ix, (name, files) in enumerate(named):
-            delivery = Delivery(name, tuple(files), content_digest(files))
+            stamps = tuple(stamp(file) for file in files)  # before the digest: no change slips between
+            delivery = Delivery(name, tuple(files), content_digest(files), stamps)
             is_last = ix == len(named) - 1
             reports.append(_deliver(job, delivery, ix, is_closing=close and is_last))
         if close and not (reports and reports[-1].get("is_closed")):

@@ -5,5 +5,17 @@ from stream.pings.chunks import PingChunk
 from stream.pings.files import content_digest, expand
 from stream.pings.hold import HoldBack
 from stream.pings.read import PingSource, open_source
+from stream.pings.seal import Stamp, stamp, watched
 
-__all__ = ["HoldBack", "PingChunk", "PingSource", "VehicleBook", "content_digest", "expand", "open_source"]
+__all__ = [
+    "HoldBack",
+    "PingChunk",
+    "PingSource",
+    "Stamp",
+    "VehicleBook",
+    "content_digest",
+    "expand",
+    "open_source",
+    "stamp",
+    "watched",
+]

@@ -53,6 +53,17 @@ def _connect(
         raise StoreError(f"{path}: {told}") from err
 
 
+@contextmanager
+def _interruptible() -> Iterator[None]:
+    """Let an interrupt that meets the engine at work be an interrupt, not a fault of the engine."""
+    try:
+        yield
+    except (duckdb.InterruptException, RuntimeError) as err:
+        if "interrupted" not in str(err).lower():
+            raise
+        raise KeyboardInterrupt from err
+
+
 def _readable(incoming: pl.DataFrame | None) -> Any:
     """Give a frame as the engine reads it: it knows no 128-bit integers, a decimal holds sums up to 10^38."""
     if incoming is None:
@@ -157,7 +168,8 @@ class Store:
     def _telling(self) -> Iterator[None]:
         """Turn what the engine says of disk and memory into errors with a mend."""
         try:
-            yield
+            with _interruptible():
+                yield
         except (duckdb.IOException, duckdb.FatalException) as err:
             raise StoreError(
                 f"{self.path}: can't be written or read ({str(err).splitlines()[0]}); "
@@ -220,7 +232,8 @@ class Store:
         try:
             reader = self._con.query(statement(name).text, params=params or {}).to_arrow_reader(batch_rows)
             yield pa.RecordBatch.from_pylist([], schema=reader.schema)
-            yield from reader
+            with _interruptible():
+                yield from reader
         except duckdb.OutOfMemoryException as err:
             raise StoreError(f"{self.path}: DuckDB ran out of memory; raise run.memory_mb") from err
         except (duckdb.IOException, pa.ArrowException) as err:
@@ -241,7 +254,8 @@ class Store:
         try:
             yield
             try:
-                self._con.commit()
+                with _interruptible():
+                    self._con.commit()
             except duckdb.Error as err:
                 raise StoreError(
                     f"{self.path}: could not commit ({str(err).splitlines()[0]}), nothing was written; "

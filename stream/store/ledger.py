@@ -7,11 +7,14 @@ configuration, vehicle names) are never added up.
 import json
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from stream.config import Settings
 from stream.errors import StoreError
 from stream.store.database import Store
+
+if TYPE_CHECKING:
+    from stream.pings import Stamp
 
 # Keys of the settings that change no result.
 _FREE = {"source", "privacy", "run"}
@@ -28,11 +31,13 @@ class Delivery:
     name : what the ledger calls it
     files : read in this order as one stream
     digest : of their content; empty for a batch that only closes
+    stamps : of the files, from before the digest
     """
 
     name: str
     files: tuple[Path, ...]
     digest: str
+    stamps: tuple["Stamp", ...] = ()
 
 
 def find_known(store: Store, delivery: Delivery) -> dict[str, Any] | None:

@@ -46,6 +46,8 @@ class VehicleNames:
     def save(self) -> None:
         """Write a new key to its file, for its owner only; nothing to do for one on file.
 
+        The file is there with the whole key or not at all, whatever ends the process.
+
         Raises
         ------
         StoreError
@@ -54,9 +56,7 @@ class VehicleNames:
         if self.unsaved is None or (self.unsaved.exists() and _read(self.unsaved) == self.secret):
             return
         try:
-            handle = os.open(self.unsaved, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600)
-            with os.fdopen(handle, "w", encoding="ascii") as out:
-                out.write(self.secret.hex() + "\n")
+            _write_new(self.unsaved, self.secret.hex() + "\n")
         except OSError as err:
             raise _unusable(self.unsaved, err) from err
 
@@ -83,6 +83,25 @@ class VehicleNames:
 def key_path(store_path: Path, settings: Settings) -> Path:
     """Find the key file: the configured one, else beside the store under the store's name."""
     return settings.privacy.key_file or store_path.with_name(store_path.name + ".key")
+
+
+def _write_new(path: Path, text: str) -> None:
+    """Make a file that must not be there, whole from its first moment."""
+    part = path.with_name(f".{path.name}.{os.getpid()}.part")
+    try:
+        handle = os.open(part, os.O_WRONLY | os.O_CREAT | os.O_TRUNC, 0o600)
+        with os.fdopen(handle, "w", encoding="ascii") as out:
+            out.write(text)
+            out.flush()
+            os.fsync(out.fileno())
+        try:
+            path.hardlink_to(part)
+        except FileExistsError:
+            raise
+        except OSError:  # a file system without links
+            part.rename(path)
+    finally:
+        part.unlink(missing_ok=True)
 
 
 def _unusable(path: Path, err: OSError) -> StoreError:
