@@ -4,6 +4,7 @@ Guarantee: a writer lives inside one transaction of the store; its ledger row is
 is written only when every row in is accounted for.
 """
 
+import time
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -80,6 +81,7 @@ class BatchWriter:
         self._store = store
         self._settings = settings
         self._started_us = now_us()
+        self._start_s = time.monotonic()
         self.batch_id = int(store.run("ledger/next_batch_id")[0][0])
         self.totals = BatchTotals()
         pin_config(store, settings, key_id)
@@ -147,7 +149,7 @@ class BatchWriter:
             "first_ping_us": got.first_ping_us,
             "last_ping_us": got.last_ping_us,
             "started_us": self._started_us,
-            "ended_us": now_us(),
+            "ended_us": max(now_us(), self._started_us),  # the clock may have been set back
             "is_closed": is_closed,
             "is_backfill": False,
         }
@@ -171,5 +173,5 @@ class BatchWriter:
             "trips": got.trips,
             "unfinished": dict(sorted(got.unfinished.items())),
             "is_closed": row["is_closed"],
-            "seconds": round((row["ended_us"] - row["started_us"]) / 1e6, 3),
+            "seconds": round(time.monotonic() - self._start_s, 3),
         }
