@@ -2,13 +2,16 @@
 
 from collections.abc import Callable, Iterator
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import pytest
 
 from stream.config import Settings, load_settings
 from stream.store import Store
 from tests.town import town_xml
+
+if TYPE_CHECKING:
+    from tests.forks import Forks
 
 
 @pytest.fixture
@@ -50,3 +53,13 @@ def town_osm(tmp_path_factory: pytest.TempPathFactory) -> Path:
     path = tmp_path_factory.mktemp("town") / "town.osm"
     path.write_text(town_xml(), encoding="utf-8")
     return path
+
+
+@pytest.fixture(scope="session")
+def forks(tmp_path_factory: pytest.TempPathFactory, town_osm: Path) -> "Iterator[Forks]":
+    """Give the command with everything loaded, for tests that run it a hundred times."""
+    from stream.network import build_network
+    from tests.forks import Forks
+
+    with Forks(tmp_path_factory.mktemp("forks"), build_network(town_osm, None, load_settings())) as server:
+        yield server

@@ -35,7 +35,7 @@ def network(
     settings = session.settings()
     run = settings.run
     if session.store.exists():  # told now if it can't be written, not after a long build
-        Store.open(session.store).close()
+        Store.open(session.store, create=True).close()
     with Bars(session) as bars:
         built = build_network(extract, zones, settings, lambda what, n: bars.show(what, n, 0, f"{n:,}"))
     with Store.open(session.store, create=True, memory_mb=run.memory_mb, threads=run.threads) as store:

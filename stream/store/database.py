@@ -142,6 +142,8 @@ class Store:
         if not tables and create and not self.read_only:
             self._create()
             return
+        if not tables:
+            raise StoreError(f"{self.path}: is empty; run `turntally network EXTRACT` first")
         if "meta" not in tables:
             raise StoreError(f"{self.path}: is a DuckDB file, no turntally store; name another with --store")
         found = self.meta().get("format_version")
