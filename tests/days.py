@@ -80,6 +80,7 @@ def archive(n_vehicles: int = 8, n_drives: int = 2, seed: int = 3) -> list[Row]:
             for start in starts[: n_drives if day < N_DAYS - 1 else 1]:
                 rows += _drive(f"v{v}", start + dice.randrange(30), step_s, dice)
     rows += [dice.choice(rows) for _ in range(20)]
+    rows += [(v, t, lon + 0.0005, lat) for v, t, lon, lat in (dice.choice(rows) for _ in range(10))]
     rows += [("far", START_S + d * DAY_S + i, 12.0, 50.0) for d in range(N_DAYS) for i in range(3)]
     return sorted(rows, key=lambda r: r[1])
 
