@@ -1,4 +1,5 @@
--- purpose: find counts that differ: histogram against moment by stratum, and moment against the passages of the batch
+-- purpose: find counts that differ: histogram against moment by stratum, and moment against the passages of the
+--          batch, or of the month that was rolled up
 -- grain:   one row per batch, tally and, where it applies, stratum at fault; empty means sound
 -- params:  none
 -- reads:   histogram, moment, tally, passage, batch; writes: nothing
@@ -10,10 +11,15 @@ with counted as (
     select batch_id, tally, sum(n)::bigint as n, sum(sum) as total
     from moment
     group by batch_id, tally
+), holder as (
+    -- the batch whose number the counts bear: its own, or that of its month once rolled up
+    select batch_id as part_id, coalesce(rolled_into, batch_id) as batch_id
+    from batch
 ), passed as (
-    select batch_id, count(*) as n, sum(delay_ms) as total
-    from passage
-    group by batch_id
+    select h.batch_id, count(*) as n, sum(p.delay_ms) as total
+    from passage as p
+    join holder as h on h.part_id = p.batch_id
+    group by h.batch_id
 ), wanted as (
     select b.batch_id, t.tally, coalesce(p.n, 0) as n, coalesce(p.total, 0) as total
     from batch as b

@@ -2,7 +2,7 @@
 -- grain:   one row per table and missing thing; empty means sound
 -- params:  none
 -- reads:   passage, section, unfinished, trip, histogram, moment, batch_count, carry, batch, movement, arm, stratum,
---          tally, reference; writes: nothing
+--          tally, reference, span; writes: nothing
 with part as (
     select 'passage' as table_name, batch_id from passage
     union all
@@ -19,6 +19,14 @@ with part as (
     select 'batch_count' as table_name, batch_id from batch_count
     union all
     select 'carry' as table_name, batch_id from carry
+    union all
+    select 'carry' as table_name, replaced_by as batch_id from carry
+    where replaced_by is not null
+    union all
+    select 'span' as table_name, batch_id from span
+    union all
+    select 'batch' as table_name, rolled_into as batch_id from batch
+    where rolled_into is not null
 )
 select p.table_name, 'batch ' || p.batch_id::varchar as missing, count(*) as n
 from part as p

@@ -1,6 +1,7 @@
--- purpose: drop states that a later batch has replaced, before the next batch adds its own
--- grain:   one row per vehicle and batch dropped
--- params:  none
--- reads:   carry_newest; writes: carry
-delete from carry
-where batch_id < (select n.batch_id from carry_newest as n where n.vehicle = carry.vehicle)
+-- purpose: mark the states that this batch replaces; they stay, so that it can be undone
+-- grain:   one row per vehicle that has a state
+-- params:  $batch_id
+-- reads:   incoming (registered: vehicle varchar); writes: carry
+update carry
+set replaced_by = $batch_id
+where replaced_by is null and vehicle in (select i.vehicle from incoming as i)

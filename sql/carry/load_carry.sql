@@ -1,7 +1,7 @@
 -- purpose: load the newest states of some vehicles
 -- grain:   one row per asked vehicle that has a state
 -- params:  none
--- reads:   incoming (registered: ix bigint, vehicle varchar), carry, carry_newest; writes: nothing
+-- reads:   incoming (registered: ix bigint, vehicle varchar), carry; writes: nothing
 select
     i.ix, c.carry_version, c.t_us, c.lon, c.lat, c.held_us, c.held_lon, c.held_lat, c.has_last,
     c.is_held, c.mode, c.is_placed, c.since, c.has_met, c.is_queued, c.n_skipped, c.stay_us, c.stay_lon,
@@ -13,6 +13,6 @@ select
     c.n_columns, c.anchor, c.column_kept, c.column_n, c.at_edge, c.back, c.at_m, c.cost, c.waiting_us,
     c.waiting_lon, c.waiting_lat
 from incoming as i
-join carry_newest as n on n.vehicle = i.vehicle
-join carry as c on c.vehicle = n.vehicle and c.batch_id = n.batch_id
+join carry as c on c.vehicle = i.vehicle
+where c.replaced_by is null
 order by i.ix

@@ -14,6 +14,8 @@ create table network (
     min_lat double not null check (min_lat between -90 and 90),
     max_lon double not null check (max_lon between -180 and 180),
     max_lat double not null check (max_lat between -90 and 90),
+    -- that rings tell, else right; whatever is configured
+    seen_side varchar not null check (seen_side in ('right', 'left')),
     -- result-changing keys the network was built with, as JSON; empty when not told
     config varchar not null,
     put_at timestamp not null

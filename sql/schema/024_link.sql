@@ -15,5 +15,8 @@ create table link (
     middle_back_m double,
     is_open_fwd boolean not null,
     is_open_back boolean not null,
+    -- place halfway along, which decides on the zone
+    lon double not null,
+    lat double not null,
     zone varchar not null
 )

@@ -22,6 +22,12 @@ create table batch (
     ended_at timestamp not null,
     -- what was open was ended after the batch's last row
     is_closed boolean not null,
+    -- older than what was in, and so taken in alone
     is_backfill boolean not null,
+    -- of a backfill: trips that begin, and trips left open, next to pings that other batches hold
+    trips_cut_start bigint not null check (trips_cut_start >= 0),
+    trips_cut_end bigint not null check (trips_cut_end >= 0),
+    -- the batch that holds the histograms of its month; null until `compact` rolled it up
+    rolled_into bigint,
     check (rows_in = rows_used + rows_dropped + rows_held)
 )

@@ -1,12 +1,14 @@
 -- purpose: what detection remembers of a vehicle as a batch left it; one column per field of detect/carry.py,
 --          and the pings held back before it
--- grain:   one row per vehicle and batch; the newest counts, the one before it stays until the next batch
---          (no index, see passage)
+-- grain:   one row per vehicle and batch; that which nothing replaced counts, the others stay so that a batch
+--          can be undone (no index, see passage)
 -- params:  none
 -- reads:   nothing; writes: carry
 create table carry (
     vehicle varchar not null,
     batch_id bigint not null,
+    -- the batch whose state took its place; null: this one counts
+    replaced_by bigint,
     carry_version integer not null,
     -- time of the last good ping, µs since 1970, UTC, as all *_us
     t_us bigint not null,

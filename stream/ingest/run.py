@@ -53,7 +53,9 @@ def ingest(
     list of dict
         One per batch: `batch`, `batch_id`, `status` (`taken in`, `closed`, `already in`, `nothing open`),
         and but for the last two `rows_in`, `rows_used`, `rows_dropped`, `rows_held`, `dropped` and
-        `unfinished` by reason, `n_vehicles`, `passages`, `sections`, `trips`, `is_closed`, `seconds`.
+        `unfinished` by reason, `n_vehicles`, `passages`, `sections`, `trips`, `is_closed`, `is_backfill`,
+        `trips_cut_start` and `trips_cut_end` (of a backfill: trips that begin, or were left open, within
+        `trips.max_gap_s` of pings that other batches hold), `seconds`.
 
     Raises
     ------
@@ -77,7 +79,8 @@ def ingest(
             delivery = Delivery(name, tuple(files), content_digest(files), stamps)
             is_last = ix == len(named) - 1
             reports.append(_deliver(job, delivery, ix, is_closing=close and is_last))
-        if close and not (reports and reports[-1].get("is_closed")):
+        last = reports[-1] if reports else {}
+        if close and (not last.get("is_closed") or last["is_backfill"]):
             reports.append(_end_open(job))
         return reports
 

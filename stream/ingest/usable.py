@@ -4,6 +4,7 @@ Guarantee: single bad rows are counted, never refused; what is refused is a deli
 could be right.
 """
 
+from datetime import UTC, datetime
 from typing import Any
 
 import numpy as np
@@ -11,7 +12,8 @@ from numpy.typing import NDArray
 
 from stream.config import Settings
 from stream.errors import InputError
-from stream.store import Store
+from stream.ingest.job import Job
+from stream.ingest.standing import Standing
 from stream.store.batch import BatchTotals
 from stream.store.ledger import Delivery
 
@@ -43,27 +45,23 @@ class Sample:
 
 
 def check_usable(
-    store: Store,
-    settings: Settings,
-    delivery: Delivery,
-    totals: BatchTotals,
-    network: dict[str, Any],
-    sample: Sample,
+    job: Job, delivery: Delivery, totals: BatchTotals, standing: Standing, sample: Sample
 ) -> None:
-    """Refuse a delivery that lies elsewhere, comes out of order, or gives nothing at all.
+    """Refuse a delivery that lies elsewhere, comes out of order, is in already, or gives nothing at all.
 
     Raises
     ------
     InputError
         With what is wrong, the file, and the mend.
     """
+    settings = job.settings
     where = ", ".join(str(f) for f in delivery.files[:3]) + (" ..." if len(delivery.files) > 3 else "")
     if totals.dropped.get("late", 0) > LATE_SHARE * totals.rows_in:
-        raise _out_of_order(store, settings, where, totals)
+        raise _late(job, where, totals, standing)
     if totals.rows_in and totals.rows_used == 0 and totals.rows_held <= 0:
         outside = sum(totals.dropped.get(r, 0) for r in ("outside_area", "bad_coordinate", "null_island"))
         if outside * 2 > totals.rows_in:
-            raise _elsewhere(settings, where, totals, network, sample)
+            raise _elsewhere(settings, where, totals, job.network, sample)
         raise InputError(
             f"{where}: none of its {totals.rows_in} rows can be used: {_reasons(totals)}; "
             "see the rows in question, or mend the keys under source"
@@ -74,19 +72,44 @@ def _reasons(totals: BatchTotals) -> str:
     return ", ".join(f"{reason} {n}" for reason, n in sorted(totals.dropped.items()))
 
 
-def _out_of_order(store: Store, settings: Settings, where: str, totals: BatchTotals) -> InputError:
-    said = f"{where}: {totals.dropped['late']} of {totals.rows_in} rows are older than a row before them"
-    if settings.source.order == "time":
-        mend = "if the file is in no order of time, set source.order to unsorted (it is then sorted first)"
-    elif settings.source.order == "vehicle":
-        mend = "if a vehicle's rows are in no order of time, set source.order to unsorted"
-    else:
-        mend = "name deliveries in the order of their times"
-    times = [row["last_ping_at"] for row in store.rows("ledger/all_batch") if row["last_ping_at"] is not None]
-    if times:
-        newest = f"{max(times):%Y-%m-%d %H:%M:%S}"
-        mend += f"; pings up to {newest} UTC are in already, older days can't follow newer ones"
-    return InputError(f"{said}: {mend}")
+def _utc(us: int) -> str:
+    return f"{datetime.fromtimestamp(us / 1e6, UTC):%Y-%m-%d %H:%M:%S}"
+
+
+def _late(job: Job, where: str, totals: BatchTotals, standing: Standing) -> InputError:
+    said = f"{where}: {totals.dropped['late']} of {totals.rows_in} rows"
+    if not standing.is_backfill and standing.n_older > LATE_SHARE * totals.rows_in:
+        return InputError(
+            f"{said} are older than what is in of their vehicles, and {standing.n_newer} newer than all that "
+            f"is in (up to {_utc(standing.newest_us)} UTC): split the delivery there "
+            "and name its parts one by one"
+        )
+    if standing.n_in > LATE_SHARE * totals.rows_in:
+        same = _at_that_time(job, totals)
+        return InputError(
+            f"{said} have times that are in already for their vehicles, in {', '.join(same)}; to replace "
+            f"a batch, `turntally retract {same[0]}` first, else leave these rows out"
+        )
+    said += " are older than a row before them"
+    if job.settings.source.order == "time":
+        return InputError(
+            f"{said}: if the file is in no order of time, set source.order to unsorted "
+            "(it is then sorted first)"
+        )
+    return InputError(f"{said}: if a vehicle's rows are in no order of time, set source.order to unsorted")
+
+
+def _at_that_time(job: Job, totals: BatchTotals) -> list[str]:
+    """Name the batches whose times overlap with those read."""
+    assert totals.first_ping_us is not None
+    assert totals.last_ping_us is not None
+    first, last = _utc(totals.first_ping_us), _utc(totals.last_ping_us)
+    names = []
+    for row in job.store.rows("ledger/all_batch"):
+        begin, end = row["first_ping_at"], row["last_ping_at"]
+        if begin is not None and f"{begin:%Y-%m-%d %H:%M:%S}" <= last and f"{end:%Y-%m-%d %H:%M:%S}" >= first:
+            names.append(row["batch_name"])
+    return names
 
 
 def _elsewhere(

@@ -116,8 +116,27 @@ class BatchWriter:
         self._store.run("batch/add_histogram", batch, counts.histogram)
         self._store.run("batch/add_moment", batch, counts.moment)
 
-    def finish(self, delivery: Delivery, network_digest: str, *, is_closed: bool) -> dict[str, Any]:
+    def finish(
+        self,
+        delivery: Delivery,
+        network_digest: str,
+        *,
+        is_closed: bool,
+        is_backfill: bool = False,
+        trips_cut: tuple[int, int] = (0, 0),
+    ) -> dict[str, Any]:
         """Check the rows and write the ledger.
+
+        Parameters
+        ----------
+        delivery, network_digest
+            What came, and the network it was set on.
+        is_closed
+            What was open has been ended.
+        is_backfill
+            It was taken in alone.
+        trips_cut
+            Trips that may be parts of longer ones: at their start, at their end.
 
         Returns
         -------
@@ -151,7 +170,9 @@ class BatchWriter:
             "started_us": self._started_us,
             "ended_us": max(now_us(), self._started_us),  # the clock may have been set back
             "is_closed": is_closed,
-            "is_backfill": False,
+            "is_backfill": is_backfill,
+            "trips_cut_start": trips_cut[0],
+            "trips_cut_end": trips_cut[1],
         }
         self._store.run("batch/put_batch", row)
         return self._report(row)
@@ -173,5 +194,8 @@ class BatchWriter:
             "trips": got.trips,
             "unfinished": dict(sorted(got.unfinished.items())),
             "is_closed": row["is_closed"],
+            "is_backfill": row["is_backfill"],
+            "trips_cut_start": row["trips_cut_start"],
+            "trips_cut_end": row["trips_cut_end"],
             "seconds": round(time.monotonic() - self._start_s, 3),
         }

@@ -22,7 +22,7 @@ if TYPE_CHECKING:
 
     from stream.network.model import Streets
 
-FORMAT_VERSION = 1
+FORMAT_VERSION = 2
 FIRST_REFERENCE = "limit or class default"
 _Config = dict[str, str | bool | int | float | list[str]]
 _EPOCH = datetime(1970, 1, 1, tzinfo=UTC)

@@ -5,6 +5,7 @@ configuration, vehicle names) are never added up.
 """
 
 import json
+import shlex
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -59,12 +60,34 @@ def find_known(store: Store, delivery: Delivery) -> dict[str, Any] | None:
         if row["content_digest"] == delivery.digest:
             return row
     if rows:
+        mend = f"`turntally retract {shlex.quote(delivery.name)}` first, or"
+        if rows[0]["rolled_into"] is not None:
+            mend = "it was rolled up and can't be retracted:"
         raise StoreError(
             f"{store.path}: batch {delivery.name} is in with other content ({rows[0]['rows_in']} rows, "
             f"digest {rows[0]['content_digest'][:16]}, now {delivery.digest[:16]}); "
-            f"`turntally retract {delivery.name}` first, or give this delivery another name with --batch"
+            f"{mend} give this delivery another name with --batch"
         )
     return None
+
+
+def find_batch(store: Store, named: str) -> dict[str, Any]:
+    """Look a batch up by its name, else by its number.
+
+    Raises
+    ------
+    StoreError
+        There is none.
+    """
+    rows = store.rows("ledger/all_batch")
+    found = [r for r in rows if r["batch_name"] == named] or [r for r in rows if str(r["batch_id"]) == named]
+    if not found:
+        known = ", ".join(r["batch_name"] for r in rows[-5:])
+        raise StoreError(
+            f"{store.path}: no batch {named}; "
+            + (f"the newest are {known}, `turntally status` shows all" if rows else "none is in")
+        )
+    return found[0]
 
 
 def _result_keys(settings: Settings) -> dict[str, Any]:

@@ -51,6 +51,10 @@ def _batches(store: Store) -> list[dict[str, Any]]:
                 "last_ping_at": row["last_ping_at"],
                 "ended_at": row["ended_at"],
                 "is_closed": row["is_closed"],
+                "is_backfill": row["is_backfill"],
+                "trips_cut_start": row["trips_cut_start"],
+                "trips_cut_end": row["trips_cut_end"],
+                "rolled_into": row["rolled_into"],
             }
         )
     return out

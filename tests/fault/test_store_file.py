@@ -56,13 +56,13 @@ def test_database_of_something_else_is_refused(tmp_path: Path) -> None:
         assert plain.execute("select table_name from duckdb_tables()").fetchall() == [("sale",)]
 
 
-@pytest.mark.parametrize("version", ["0", "2", "next"])
+@pytest.mark.parametrize("version", ["1", "3", "next"])
 def test_store_of_another_format_is_refused(tmp_path: Path, version: str) -> None:
     """An older or newer format is refused with both numbers."""
     path = tmp_path / "s.duckdb"
     with Store.open(path, create=True) as store:
         store.put_meta("format_version", version)
-    with pytest.raises(StoreError, match=f"has store format {version}, this program reads format 1"):
+    with pytest.raises(StoreError, match=f"has store format {version}, this program reads format 2"):
         Store.open(path)
 
 

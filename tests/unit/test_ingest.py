@@ -258,16 +258,6 @@ def test_rows_in_no_order_are_refused_with_the_key(
     assert report["dropped"] == {"late": 5}
 
 
-def test_older_day_is_refused(store_path: Path, tmp_path: Path, settings: Settings) -> None:
-    """A day older than what is in can't follow it; the refusal says up to when pings are in."""
-    ingest(store_path, [write(tmp_path / "new.csv", drive("a", 10))], settings)
-    old = write(tmp_path / "old.csv", drive("a", 10, T0 - 86_400))
-    with pytest.raises(
-        InputError, match=r"old\.csv: 10 of 10 rows .*up to 2023-11-14 22:14:50 UTC are in already"
-    ):
-        ingest(store_path, [old], settings)
-
-
 def test_changed_configuration_is_refused(store_path: Path, tmp_path: Path, make_settings: Make) -> None:
     """A key that changes results can't change between batches; the refusal names it with both values."""
     ingest(store_path, [write(tmp_path / "1.csv", drive("a", 10))], make_settings())

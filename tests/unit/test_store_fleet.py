@@ -56,7 +56,7 @@ def test_carry_has_a_column_for_each_field() -> None:
     assert [("vehicle", "varchar"), *wanted] == list(statement("carry/put_carry").incoming)
     lines = statement("schema/080_carry").text.splitlines()
     columns = [line.split()[:2] for line in lines if line.startswith("    ") and "--" not in line]
-    assert [list(pair) for pair in wanted] == columns[3:]
+    assert [list(pair) for pair in wanted] == columns[4:]
 
 
 def test_states_come_back_as_they_were(fresh_store: Store) -> None:
@@ -78,8 +78,8 @@ def test_states_come_back_as_they_were(fresh_store: Store) -> None:
     assert held_rows(wanted) == second.held_before
 
 
-def test_newest_state_counts_and_the_one_before_is_kept(fresh_store: Store) -> None:
-    """A vehicle's newest state is loaded; the one before stays for one more batch, and older ones go."""
+def test_newest_state_counts_and_those_before_are_kept(fresh_store: Store) -> None:
+    """A vehicle's newest state is loaded; each one before names the batch that replaced it."""
     for batch_id, t_us in ((1, 100), (2, 200), (3, 300)):
         fleet = Fleet(fresh_store, NAMER)
         fleet.grow(["a"] if batch_id > 1 else ["a", "b"])
@@ -88,8 +88,10 @@ def test_newest_state_counts_and_the_one_before_is_kept(fresh_store: Store) -> N
     fleet = Fleet(fresh_store, NAMER)
     fleet.grow(["b", "a"])
     assert fleet.states["t_us"].tolist() == [100, 300]
-    kept = fresh_store._con.execute("select vehicle, batch_id from carry order by all").fetchall()
-    assert kept == [("a", 2), ("a", 3), ("b", 1)]
+    kept = fresh_store._con.execute(
+        "select vehicle, batch_id, replaced_by from carry order by all"
+    ).fetchall()
+    assert kept == [("a", 1, 2), ("a", 2, 3), ("a", 3, None), ("b", 1, None)]
 
 
 def test_open_vehicles_are_added_once(fresh_store: Store) -> None:

@@ -1,0 +1,6 @@
+-- purpose: drop the rows of some batches that were added up
+-- grain:   one row per row dropped
+-- params:  none
+-- reads:   incoming (registered: batch_id bigint); writes: histogram
+delete from histogram
+where batch_id in (select i.batch_id from incoming as i)
