@@ -7,7 +7,7 @@ from stream.detect.clean import apart_m
 from stream.detect.passages import Out, enter, leave
 from stream.detect.search import Routes
 from stream.detect.step import Step, has_gate, kept_speed, lay_pieces, place_kept
-from stream.detect.times import LONG_S, cubic_share, drive_s, gate_error_s, long_share
+from stream.detect.times import LONG_S, cubic_share, drive_s, gate_error_s, long_share, standing
 from stream.kernel import kernel, spliced
 from stream.network.model import NONE
 from stream.network.routes import StreetIndex
@@ -100,8 +100,13 @@ def gate_time(
         after = speed_after(st, last, index, step, j + 1, m)
         if dt_s > LONG_S:
             drive = drive_s(index, step, n, step.at_m[j], step.at_m[j + 1], par.drive_share)
+            stood = standing(step.t_us[j] - step.t_us[j - 1], before)
+            stay_us = (
+                step.t_us[j + 2] - step.t_us[j + 1] if j + 2 < m else st.leave_us[last] - st.arrive_us[last]
+            )
+            stands = standing(stay_us, after)
             share = long_share(
-                index, step, n, step.at_m[j], step.at_m[j + 1], gate_m, dt_s, before, after, par.drive_share
+                index, step, n, step.at_m[j], step.at_m[j + 1], gate_m, dt_s, stood, stands, par.drive_share
             )
             speed = min(length / drive, max(slope, 0.1)) if drive > 0.0 else slope
         else:

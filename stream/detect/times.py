@@ -14,6 +14,11 @@ from stream.network.routes import StreetIndex
 
 LONG_S = 6.5  # longer steps are not smooth motion
 STAND_MPS = 2.0  # slower at a step's end: it may have stood there
+# How likely the slack of a long step lies at a place: where the vehicle was seen to stand, where it came or
+# went slowly, at each mouth on the way.
+AT_STAY = 6.0
+AT_SLOW = 1.5
+AT_MOUTH = 1.0
 NOISE_M = 2.5  # m, of one place against the next, for the error estimate
 
 
@@ -59,15 +64,10 @@ def drive_s(index: StreetIndex, step: Step, n: int, from_m: float, to_m: float, 
 
 
 @kernel
-def stop_place(index: StreetIndex, step: Step, n: int, from_m: float, to_m: float) -> float:
-    """Give the first mouth that a stretch of a step comes to, m along the step; -1 none."""
-    for i in range(n - 1):
-        end = step.start_m[i] + step.to_m[i] - step.from_m[i]
-        if from_m <= end <= to_m:
-            e = index.edge[step.edge[i]]
-            if not e.is_inside and e.to_mouth == 0.0:
-                return end
-    return -1.0
+def mouth_before(index: StreetIndex, step: Step, i: int) -> bool:
+    """Tell whether a piece of a step ends at a mouth: where a vehicle waits to enter a junction."""
+    e = index.edge[step.edge[i]]
+    return not e.is_inside and e.to_mouth == 0.0 and step.to_m[i] >= e.length
 
 
 @kernel
@@ -79,8 +79,8 @@ def long_share(
     to_m: float,
     gate_m: float,
     dt_s: float,
-    v0: float,
-    v1: float,
+    stood: float,
+    stands: float,
     share: float,
 ) -> float:
     """Give the share of a long step's time at which a gate is reached.
@@ -89,23 +89,33 @@ def long_share(
     ----------
     from_m, to_m, gate_m : float    metres along the step
     dt_s : float                    its duration
-    v0, v1 : float                  speeds before and after, m/s; -1 unknown
+    stood, stands : float           how likely the vehicle stood at the step's start, at its end
+    share : float                   of the cruise speed that is driven
     """
     whole = drive_s(index, step, n, from_m, to_m, share)
     part = drive_s(index, step, n, from_m, gate_m, share)
     slack = dt_s - whole
     if slack <= 0.0 or whole <= 0.0:
         return part / whole if whole > 0.0 else 0.5
-    stood = 0.0 <= v0 < STAND_MPS
-    stands = 0.0 <= v1 < STAND_MPS
-    if stood or stands:
-        # Standing at both ends: how the slack is shared isn't known, half each is unbiased.
-        before = slack if not stands else (0.5 * slack if stood else 0.0)
-        return (part + before) / dt_s
-    stop = stop_place(index, step, n, from_m, to_m)
-    if stop < 0.0:
+    before = stood
+    every = stood + stands
+    for i in range(n - 1):
+        end = step.start_m[i] + step.to_m[i] - step.from_m[i]
+        if from_m <= end <= to_m and mouth_before(index, step, i):
+            every += AT_MOUTH
+            if end < gate_m:
+                before += AT_MOUTH
+    if every <= 0.0:
         return part / whole
-    return (part + slack if gate_m > stop else part) / dt_s
+    return (part + slack * before / every) / dt_s
+
+
+@kernel
+def standing(stay_us: int, speed_mps: float) -> float:
+    """Give how likely a vehicle stood at a ping, as `AT_MOUTH` is: by its stay there, or its mean speed."""
+    if stay_us > 0:
+        return AT_STAY
+    return AT_SLOW if 0.0 <= speed_mps < STAND_MPS else 0.0
 
 
 @kernel

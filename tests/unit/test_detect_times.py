@@ -13,7 +13,7 @@ from scipy.interpolate import CubicHermiteSpline
 from stream.config import load_settings
 from stream.detect.records import new_record
 from stream.detect.step import STEP, Step, project_on_step
-from stream.detect.times import cubic_share, drive_s, gate_error_s, long_share
+from stream.detect.times import cubic_share, drive_s, gate_error_s, long_share, standing
 from stream.network.routes import build_index
 from tests.grid import lon_lat
 from tests.oracle.ground import e7
@@ -97,19 +97,50 @@ LONG_M = 320.0
 @given(
     places=st.lists(st.floats(0.0, LONG_M), min_size=4, max_size=12),
     dt_s=st.floats(0.5, 600.0),
-    v0=st.floats(-1.0, 30.0),
-    v1=st.floats(-1.0, 30.0),
+    stood=st.floats(0.0, 6.0),
+    stands=st.floats(0.0, 6.0),
 )
-def test_long_share_grows_with_the_gate(places: list[float], dt_s: float, v0: float, v1: float) -> None:
+def test_long_share_grows_with_the_gate(
+    places: list[float], dt_s: float, stood: float, stands: float
+) -> None:
     """A gate farther on is never earlier, and every gate lies within the step's time."""
     low, *gates, high = sorted(places)
     if high - low < 0.5:
         return
-    v0, v1 = (v if v >= 0.0 else -1.0 for v in (v0, v1))
     step, n = EAST
-    shares = [long_share(INDEX, step, n, low, high, gate, dt_s, v0, v1, 0.95) for gate in [low, *gates, high]]
+    shares = [
+        long_share(INDEX, step, n, low, high, gate, dt_s, stood, stands, 0.95) for gate in [low, *gates, high]
+    ]
     assert all(0.0 <= share <= 1.0 + NEAR for share in shares)
     assert all(a <= b + NEAR for a, b in itertools.pairwise(shares))
+
+
+@pytest.mark.parametrize(
+    ("stood", "stands", "gate_m", "share_before"),
+    [
+        (0.0, 0.0, 100.0, 0.0),  # before both mouths, at 120 and 270 m of the step
+        (0.0, 0.0, 200.0, 1 / 2),
+        (0.0, 0.0, 300.0, 1.0),
+        (6.0, 0.0, 100.0, 6 / 8),
+        (0.0, 6.0, 300.0, 2 / 8),
+        (1.5, 1.5, 200.0, 2.5 / 5),
+    ],
+)
+def test_slack_lies_where_vehicles_stand(
+    stood: float, stands: float, gate_m: float, share_before: float
+) -> None:
+    """What a long step has more than driving takes is shared among its ends and the mouths on the way."""
+    step, n = EAST
+    drive = gate_m / (np.float32(13.9) * 0.8)
+    slack = 60.0 - LONG_M / (np.float32(13.9) * 0.8)
+    share = long_share(INDEX, step, n, 0.0, LONG_M, gate_m, 60.0, stood, stands, 0.8)
+    assert abs(share * 60.0 - (drive + slack * share_before)) < 1e-6
+
+
+def test_standing_is_told_by_the_stay_before_the_speed() -> None:
+    """A stay says more than a slow way; a fast or an unknown one says nothing."""
+    assert standing(1_000_000, 9.0) > standing(0, 1.0) > 0.0
+    assert standing(0, 9.0) == standing(0, -1.0) == 0.0
 
 
 def test_drive_time_is_way_over_speed() -> None:
