@@ -13,6 +13,7 @@ from stream.network.model import NONE
 from stream.network.routes import StreetIndex
 
 STAND_US = 2_000_000  # a slow stretch this long is a stand
+AT_MOUTH_M = 15.0  # who turns so near the mouth turns at the junction
 
 
 @kernel
@@ -130,12 +131,18 @@ def spend(st: Any, from_us: int, to_us: int, is_slow: bool, step_ms: int) -> Non
 
 @kernel
 def meet(st: Any, index: StreetIndex, step: Step, from_piece: int, to_piece: int) -> None:
-    """Note whether pieces of the path start at a node of the open passage's junction."""
+    """Note whether pieces of the path come to the open passage's junction: over its node, or turned there."""
     if st.open_arm == NONE:
         return
     junction = index.arm_junction[st.open_arm]
     for i in range(max(from_piece, 1), to_piece + 1):
-        if index.edge[step.edge[i]].from_junction == junction:
+        e = index.edge[step.edge[i]]
+        if step.edge[i] == step.edge[i - 1] ^ 1 and step.from_m[i] > 0.0:
+            before = index.edge[step.edge[i - 1]]
+            left_m = before.to_mouth + before.length - step.to_m[i - 1]
+            if before.to_mouth >= 0.0 and left_m <= AT_MOUTH_M:
+                st.has_met = 1
+        elif e.from_junction == junction:
             st.has_met = 1
 
 

@@ -31,7 +31,7 @@ REPLACE_HELD = -5  # agrees with neither: the held one is an outlier, this one i
 
 @kernel
 def to_e7(degrees: float) -> int:
-    """Turn degrees into integers of 1e-7 degree, halves away from zero."""
+    """Turn degrees into integers of 1e-7 degree, halves upward."""
     return math.floor(degrees * 1e7 + 0.5)
 
 

@@ -11,6 +11,7 @@ from dataclasses import dataclass
 from itertools import chain, pairwise
 
 from stream.config import Settings
+from stream.detect.advance import AT_MOUTH_M
 from stream.detect.candidates import MAX_ROADS
 from stream.detect.carry import MAX_SURVIVORS
 from stream.detect.follow import DETOUR_M, DETOUR_SHARE, FAST_MPS, FAST_SHARE, FAST_SLACK_S, SHORT_CHORD_M
@@ -202,18 +203,28 @@ class Ways:
         done: list[tuple[int, int]] = []
         left: list[tuple[int, str]] = []
         arm = -1
+        met, before = False, (-1, 0.0, 0.0)
         for e, low, high in chain.from_iterable(steps):
+            # Turned between nodes, it came to the junction if it turned within 15 m of it (one-road links).
+            if e == before[0] ^ 1 and low > 0.0:
+                met = met or self.length[e] - before[2] <= AT_MOUTH_M
+            elif low == 0.0 and arm >= 0:
+                tail = int(s.road_to[e // 2] if e % 2 else s.road_from[e // 2])
+                met = met or int(s.node_junction[tail]) == int(s.arm_junction[arm])
+            before = (e, low, high)
             out, into = int(s.exit_gate_arm[e]), int(s.entry_gate_arm[e])
             if arm >= 0 and out >= 0 and low < s.exit_gate_at_m[e] <= high:
-                if s.arm_junction[out] == s.arm_junction[arm]:
-                    done.append((arm, out))
-                else:
+                if s.arm_junction[out] != s.arm_junction[arm]:
                     left.append((arm, "break"))
+                elif out == arm and not met:
+                    left.append((arm, "turned_back"))
+                else:
+                    done.append((arm, out))
                 arm = -1
             if into >= 0 and low < s.entry_gate_at_m[e] <= high:
                 if arm >= 0:
                     left.append((arm, "turned_back"))
-                arm = into
+                arm, met = into, False
         if arm >= 0:
             left.append((arm, "close"))
         return done, left
