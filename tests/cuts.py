@@ -150,11 +150,17 @@ def _write(dice: random.Random, stem: Path, rows: list[Row]) -> str:
     """Write rows in a form picked at random; give the file's name."""
     form = dice.choice(("csv", "csv.gz", "ndjson", "parquet"))
     path = stem.with_name(f"{stem.name}.{form}")
-    if form == "parquet":
+    write_as(path, rows, dice.choice((50, 1000)))
+    return path.name
+
+
+def write_as(path: Path, rows: Sequence[Row], group_rows: int = 1000) -> None:
+    """Write rows in the form that the file's ending tells; Parquet in groups of so many."""
+    if path.name.endswith(".parquet"):
         columns = {name: list(values) for name, values in zip(HEADS, zip(*rows, strict=True), strict=True)}
-        pl.DataFrame(columns).write_parquet(path, row_group_size=dice.choice((50, 1000)))
-        return path.name
-    if form == "ndjson":
+        pl.DataFrame(columns).write_parquet(path, row_group_size=group_rows)
+        return
+    if path.name.endswith(".ndjson"):
         text = "".join(json.dumps(dict(zip(HEADS, row, strict=True))) + "\n" for row in rows)
     else:
         out = io.StringIO()
@@ -162,5 +168,4 @@ def _write(dice: random.Random, stem: Path, rows: list[Row]) -> str:
         out.writelines(",".join(map(str, row)) + "\n" for row in rows)
         text = out.getvalue()
     packed = text.encode()
-    path.write_bytes(gzip.compress(packed, 1) if form == "csv.gz" else packed)
-    return path.name
+    path.write_bytes(gzip.compress(packed, 1) if path.name.endswith(".gz") else packed)

@@ -7,6 +7,7 @@ BLOBS is a pickle of a network's arrays, by which the kernels are loaded. Each l
 but for the second that imports take; a strike is a signal from outside, at a step or some time after it.
 """
 
+import codecs
 import contextlib
 import json
 import os
@@ -45,6 +46,7 @@ def warm(blobs: dict[str, bytes]) -> None:
     lon, lat = np.full(3, 10.001), np.full(3, 50.0)
     detector.feed(states, np.zeros(3, np.int32), np.arange(3) * 1_000_000, lon, lat)
     detector.close(states)
+    codecs.lookup("ascii")  # another user may not read the library
     GroupCheck(Path("none"), 0).check(np.zeros(1, np.int32), np.zeros(1, np.int64), 1)
 
 
@@ -103,16 +105,29 @@ def _set_clock(shift_s: float, from_step: int, taken: list[int]) -> None:
             module.now_us = wrong  # type: ignore[attr-defined]
 
 
-def _limit(limits: dict[str, int]) -> None:
+def _meddle(what: str, file: Path) -> None:
+    """Do to a file what happens to files."""
+    if what == "truncate":
+        os.truncate(file, file.stat().st_size // 2)
+    elif what == "append":
+        with file.open("ab") as out:
+            out.write(file.read_bytes()[-40:])
+    elif what == "remove":
+        file.unlink()
+    else:  # another file of the same size and time takes its place
+        told, other = file.stat(), file.with_name("other")
+        other.write_bytes(file.read_bytes()[::-1])
+        os.utime(other, ns=(told.st_atime_ns, told.st_mtime_ns))
+        other.replace(file)
+
+
+def _limit(more_bytes: int) -> None:
+    """Let the process have so much address space more than it has."""
     import resource
 
-    if "file_bytes" in limits:
-        signal.signal(signal.SIGXFSZ, signal.SIG_IGN)
-        resource.setrlimit(resource.RLIMIT_FSIZE, (limits["file_bytes"],) * 2)
-    if "more_bytes" in limits:
-        pages = int(Path("/proc/self/statm").read_text().split()[0])
-        most = pages * resource.getpagesize() + limits["more_bytes"]
-        resource.setrlimit(resource.RLIMIT_AS, (most, most))
+    pages = int(Path("/proc/self/statm").read_text(encoding="ascii").split()[0])
+    most = pages * resource.getpagesize() + more_bytes
+    resource.setrlimit(resource.RLIMIT_AS, (most, most))
 
 
 def _child(asked: dict[str, Any], news: int) -> int:
@@ -125,12 +140,16 @@ def _child(asked: dict[str, Any], news: int) -> int:
         os.dup2(file, number)
         os.close(file)
     steps = os.open(logs / "steps", os.O_WRONLY | os.O_CREAT | os.O_TRUNC, 0o600)
-    strike = asked["strike"]
+    strike, meddle = asked["strike"], asked["meddle"]
     taken = [0]
 
     def step(label: str) -> None:
         taken[0] += 1
         os.write(steps, f"{label}\n".encode())
+        if meddle and label == meddle[0]:
+            how = list(meddle)
+            meddle.clear()
+            _meddle(how[1], Path(how[2]))
         if taken[0] != strike["step"]:
             return
         if strike["after_s"] is None:
@@ -141,7 +160,8 @@ def _child(asked: dict[str, Any], news: int) -> int:
     _hook(step)
     if asked["clock_s"]:
         _set_clock(asked["clock_s"], asked["clock_step"], taken)
-    _limit(asked["limits"])
+    if asked["more_bytes"] is not None:
+        _limit(asked["more_bytes"])
     if asked["user"] is not None:
         os.setuid(asked["user"])
     if strike["step"] == 0 and strike["after_s"] is not None:

@@ -91,10 +91,11 @@ class Forks:
         *args: object,
         cwd: Path,
         strike: Strike = NO_STRIKE,
-        limits: dict[str, int] | None = None,
+        more_bytes: int | None = None,
         user: int | None = None,
         clock_s: float = 0.0,
         clock_step: int = 0,
+        meddle: tuple[str, str, Path] | None = None,
     ) -> Ended:
         """Run one command to its end, whatever that is.
 
@@ -104,22 +105,26 @@ class Forks:
             Arguments of `turntally`, made into texts.
         cwd
             Working folder.
-        limits
-            `file_bytes`: no file can be written beyond; `more_bytes`: of address space beside what it has.
+        more_bytes
+            Address space that it may have beside what it has.
         user
             Go on as this user.
         clock_s, clock_step
             The store's clock is wrong by so much from that step on.
+        meddle
+            The step, by name, at which something happens to a file: `truncate`, `append`, `remove` or
+            `replace`; and the file.
         """
         asked: dict[str, Any] = {
             "args": [str(a) for a in args],
             "cwd": str(cwd),
             "logs": str(self._logs),
             "strike": {"step": strike.step, "after_s": strike.after_s, "signal": int(strike.signal)},
-            "limits": limits or {},
+            "more_bytes": more_bytes,
             "user": user,
             "clock_s": clock_s,
             "clock_step": clock_step,
+            "meddle": [*meddle[:2], str(meddle[2])] if meddle else [],
         }
         assert self._server.stdin is not None
         print(json.dumps(asked), file=self._server.stdin, flush=True)

@@ -64,6 +64,14 @@ def _interruptible() -> Iterator[None]:
         raise KeyboardInterrupt from err
 
 
+def _mend(err: Exception) -> str:
+    """Say what helps against what the system refused."""
+    said = str(err)
+    if "Permission denied" in said or "Read-only file system" in said:
+        return "mend the rights of file and folder"
+    return "make room or mend the disk"
+
+
 def _readable(incoming: pl.DataFrame | None) -> Any:
     """Give a frame as the engine reads it: it knows no 128-bit integers, a decimal holds sums up to 10^38."""
     if incoming is None:
@@ -175,7 +183,7 @@ class Store:
         except (duckdb.IOException, duckdb.FatalException) as err:
             raise StoreError(
                 f"{self.path}: can't be written or read ({str(err).splitlines()[0]}); "
-                "make room or mend the disk, then run the command again"
+                f"{_mend(err)}, then run the command again"
             ) from err
         except duckdb.OutOfMemoryException as err:
             raise StoreError(f"{self.path}: DuckDB ran out of memory; raise run.memory_mb") from err
@@ -261,7 +269,7 @@ class Store:
             except duckdb.Error as err:
                 raise StoreError(
                     f"{self.path}: could not commit ({str(err).splitlines()[0]}), nothing was written; "
-                    "make room or mend the disk, then run the command again"
+                    f"{_mend(err)}, then run the command again"
                 ) from err
         except BaseException:
             self._roll_back()
