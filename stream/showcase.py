@@ -93,11 +93,16 @@ def _make_room(into: Path, paths: _Paths) -> None:
         raise InputError(f"{into}: can't be used ({err}); name another folder with --into") from err
 
 
-def _build(plan: Plan, paths: _Paths, settings: Settings) -> Built:
-    """Write the town down and build its network into a new store."""
+def _lay_out(plan: Plan, paths: _Paths, settings: Settings) -> Built:
+    """Write the town down and build its network."""
     write_osm(plan, paths.town)
     write_zones(plan, paths.zones, TIME_ZONE)
-    built = build_network(paths.town, paths.zones, settings)
+    return build_network(paths.town, paths.zones, settings)
+
+
+def _build(plan: Plan, paths: _Paths, settings: Settings) -> Built:
+    """Build the town's network into a new store."""
+    built = _lay_out(plan, paths, settings)
     run = settings.run
     with Store.open(paths.store, create=True, memory_mb=run.memory_mb, threads=run.threads) as store:
         put_network(store, built, network_config(settings))
@@ -168,6 +173,45 @@ def _measure(paths: _Paths, settings: Settings) -> tuple[pl.DataFrame, pl.DataFr
         write_report(store, paths.report, settings)
         seen = store.frame("demo/measured_passage")
     return pl.read_parquet(paths.truth), seen
+
+
+def prepare_demo(
+    into: Path,
+    days: int | None = None,
+    drive_on: str = "right",
+    settings_over: dict[str, Any] | None = None,
+    progress: Show | None = None,
+) -> dict[str, Any]:
+    """Write the invented town and its pings, day by day, and nothing else: to take them in by hand.
+
+    Parameters
+    ----------
+    into, days, drive_on, settings_over, progress
+        As for `run_demo`.
+
+    Returns
+    -------
+    `pings`, `faults_put_in`, `days`, `drive_on`, and `paths`: `town`, `zones`, `pings`, `truth`.
+
+    Raises
+    ------
+    InputError, ConfigError
+        The folder can't be used, a value is out of range.
+    """
+    settings = load_settings(over=settings_over)
+    demo = load_demo({} if days is None else {"days": days})
+    paths = _paths(into, demo)
+    _make_room(into, paths)
+    plan = build_plan(drive_on == "left")
+    built = _lay_out(plan, paths, settings)
+    driven = _drive_days(_traffic(plan, demo), built, demo, paths, _Clock(), progress or (lambda *_: None))
+    files = {"town": paths.town, "zones": paths.zones, "truth": paths.truth}
+    return {
+        "drive_on": drive_on,
+        "days": demo.days,
+        **driven,
+        "paths": {**{k: str(v) for k, v in files.items()}, "pings": [str(p) for p in paths.pings]},
+    }
 
 
 def run_demo(

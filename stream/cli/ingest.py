@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 
 from stream.cli.bars import Bars
+from stream.cli.keep import copy
 from stream.cli.say import Session, counts, warn
 from stream.errors import ConfigError, StreamError
 
@@ -30,6 +31,10 @@ def ingest(
         bool,
         typer.Option("--close", help="End what is still open: no later pings will follow."),
     ] = False,
+    snapshot: Annotated[
+        Path | None,
+        typer.Option(metavar="FILE", help="Leave a copy of the store first, to read while this runs."),
+    ] = None,
 ) -> None:
     """Take pings in, each batch as a whole or not at all."""
     session: Session = ctx.obj
@@ -46,6 +51,9 @@ def ingest(
         note = f"{now.rows:,} rows  {rate:,.0f} rows/s  {now.passages:,} passages"
         bars.show(f"{now.batch} ({now.batch_ix + 1} of {now.n_batches})", now.done, now.total, note)
 
+    if snapshot is not None:
+        copy(session, snapshot)
+        session.note(f"{snapshot} is a copy to read meanwhile")
     if files:
         note_compiling(session)
     try:
@@ -79,6 +87,11 @@ def told(one: dict[str, Any]) -> str:
         f"{one['rows_dropped']:,} dropped, {one['n_vehicles']:,} vehicles, {one['passages']:,} passages, "
         f"{one['trips']:,} trips, {one['seconds']:.1f} s"
     ]
+    if one["is_backfill"]:
+        lines.append(
+            "  older than what was in, so taken in alone: trips cut at its edges "
+            f"{one['trips_cut_start']:,} at its start, {one['trips_cut_end']:,} at its end"
+        )
     if one["dropped"]:
         lines.append(f"  dropped: {counts(one['dropped'])}")
     if one["rows_held"]:

@@ -51,7 +51,7 @@ def _status_told(whole: dict[str, Any]) -> str:
     lines.append(f"unfinished passages: {counts(whole['unfinished'])}")
     lines.append(f"open: {whole['open_trips']:,} trips, {whole['open_passages']:,} passages")
     if whole["batches"]:
-        heads = ("batch", "first ping", "last ping", "rows in", "used", "dropped", "passages", "trips")
+        heads = ("batch", "first ping", "last ping", "rows in", "used", "dropped", "passages", "trips", "")
         lines += ["", table(heads, [_batch_row(b) for b in whole["batches"]], left=3)]
     return "\n".join(lines)
 
@@ -61,7 +61,8 @@ def _batch_row(one: dict[str, Any]) -> list[str]:
         "-" if at is None else f"{at:%Y-%m-%d %H:%M}" for at in (one["first_ping_at"], one["last_ping_at"])
     ]
     numbers = [f"{one[k]:,}" for k in ("rows_in", "rows_used", "rows_dropped", "passages", "trips")]
-    return [one["batch"], *seen, *numbers]
+    notes = ["backfill"] * one["is_backfill"] + ["rolled up"] * (one["rolled_into"] is not None)
+    return [one["batch"], *seen, *numbers, ", ".join(notes)]
 
 
 def audit(ctx: typer.Context) -> None:

@@ -13,7 +13,7 @@ import typer
 from typer.core import TyperGroup
 
 from stream import __version__
-from stream.cli import export, ingest, look, network, showcase
+from stream.cli import export, ingest, keep, look, network, showcase
 from stream.cli.say import Session, warn
 from stream.errors import StreamError
 
@@ -84,6 +84,9 @@ app.command("network")(network.network)
 app.command("ingest")(ingest.ingest)
 app.command("status")(look.status)
 app.command("audit")(look.audit)
+app.command("snapshot")(keep.snapshot)
+app.command("retract")(keep.retract)
+app.command("compact")(keep.compact)
 app.command("quantiles")(look.quantiles)
 app.command("export")(export.export)
 app.command("report")(export.report)

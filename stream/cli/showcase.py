@@ -25,13 +25,21 @@ def demo(
     ),
     days: Annotated[int, typer.Option(metavar="N", min=1, max=31, help="Days to drive.")] = 3,
     drive_on: Annotated[Side, typer.Option(help="Side of the road.")] = Side.right,
+    prepare: Annotated[
+        bool, typer.Option("--prepare", help="Write the town and its pings only, to take them in by hand.")
+    ] = False,
 ) -> None:
     """Run the whole job on an invented town with known delays."""
-    from stream.showcase import run_demo
+    from stream.showcase import prepare_demo, run_demo
 
     session: Session = ctx.obj
-    note_compiling(session)
     over = {"run": session.settings().run.model_dump()}
+    if prepare:
+        with Bars(session) as bars:
+            made = prepare_demo(into, days, drive_on.value, over, bars.show)
+        session.result(made, _prepared(made))
+        return
+    note_compiling(session)
     with Bars(session) as bars:
         whole = run_demo(into, days, drive_on.value, over, bars.show)
     session.result(whole, _told(whole))
@@ -68,6 +76,19 @@ def _told(whole: dict[str, Any]) -> str:
     if "report" in whole["paths"]:
         lines.append(f"report: {whole['paths']['report']}")
     return "\n".join(lines)
+
+
+def _prepared(made: dict[str, Any]) -> str:
+    paths = made["paths"]
+    lines = [f"{paths['town']}, {paths['zones']}", *paths["pings"]]
+    return "\n".join(
+        [
+            f"an invented town that drives on the {made['drive_on']}: {made['days']} days, "
+            f"{made['pings']:,} pings",
+            *(f"  {line}" for line in lines),
+            f"next: turntally network {paths['town']} --zones {paths['zones']}",
+        ]
+    )
 
 
 def _seconds(ms: float | None, digits: int = 1) -> str:

@@ -43,6 +43,11 @@ def _connect(
         if "set lock" in text:
             told = (
                 "is in use by another process (one writer at a time, no reader beside it); wait for it to end"
+                + (
+                    ", or read a copy: `turntally ingest --snapshot FILE` leaves one before it begins"
+                    if read_only
+                    else ""
+                )
             )
         elif "not a valid DuckDB" in text:
             told = "is not a turntally store; name another file with --store"
@@ -156,9 +161,11 @@ class Store:
             raise StoreError(f"{self.path}: is a DuckDB file, no turntally store; name another with --store")
         found = self.meta().get("format_version")
         if found != str(FORMAT_VERSION):
+            is_newer = found is not None and found.isdecimal() and int(found) > FORMAT_VERSION
+            mend = "use a newer turntally" if is_newer else "use the version of turntally that wrote it"
             raise StoreError(
                 f"{self.path}: has store format {found}, this program reads format {FORMAT_VERSION}; "
-                "use the version of turntally that wrote it, or ingest anew into another --store"
+                f"{mend}, or ingest anew into another --store"
             )
 
     def _create(self) -> None:
