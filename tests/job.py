@@ -54,7 +54,12 @@ COMMANDS: tuple[tuple[tuple[str, ...], bool], ...] = (
     (("ingest", "1.csv"), True),
     (("ingest", "2.csv"), True),
     (("ingest", "3.csv"), True),
+    (("retract", "3.csv"), False),  # the newest: exactly undone
+    (("ingest", "3.csv"), True),
+    (("retract", "2.csv"), False),  # cut out from between the others
+    (("ingest", "2.csv"), True),  # older than what is in: alone
     (("ingest", "--close"), True),
+    (("compact", "--before", "2026-03-06"), True),
 )
 
 

@@ -67,20 +67,20 @@ def kill_at_moments(forks: Forks, folder: Path, stage: Stage, n: int, dice: rand
     return killed
 
 
-@pytest.mark.parametrize(("number", "n"), [(0, 2), (1, 2), (2, 5), (4, 2)])
+@pytest.mark.parametrize(("number", "n"), [(0, 1), (1, 2), (2, 3), (4, 1), (6, 2), (7, 1), (9, 1)])
 def test_kill_at_some_steps_leaves_a_commit(
     forks: Forks, stages: list[Stage], folder: Path, number: int, n: int
 ) -> None:
-    """Eleven kills at steps spread over four commands."""
+    """Eleven kills at steps spread over seven commands."""
     stage = stages[number]
     assert kill_at_steps(forks, folder, stage, spread(n, range(2, len(stage.steps) + 1))) == n
 
 
 def test_kill_at_some_moments_leaves_a_commit(forks: Forks, stages: list[Stage], folder: Path) -> None:
-    """Seven kills at random moments of a whole job, each command started again until it is done."""
+    """A kill at a random moment of each command of a whole job, each started again until it is done."""
     dice = random.Random(SEED)
-    for stage, n in zip(stages, (1, 1, 2, 2, 1), strict=True):
-        assert kill_at_moments(forks, folder, stage, n, dice) == n
+    for stage in stages:
+        assert kill_at_moments(forks, folder, stage, 1, dice) == 1
 
 
 @pytest.mark.slow
