@@ -149,6 +149,7 @@ class Plan:
     streets: Corners
     tables: dict[str, pl.DataFrame]
     digest: str
+    seen_side: str = "right"
 
 
 def install(patch: Callable[[str, Any], None]) -> None:
@@ -201,7 +202,7 @@ def plan(digest: str = "two junctions") -> Plan:
         "middle_fwd_m": 280.0,
         "middle_back_m": 280.0,
     }
-    rest |= {"is_open_fwd": True, "is_open_back": True, "zone": "east"}
+    rest |= {"is_open_fwd": True, "is_open_back": True, "lon": 1.0, "lat": 0.5, "zone": "east"}
     tables["link"] = pl.DataFrame(
         [{"link_ix": i, "arm_from_ix": a, "arm_to_ix": b, **rest} for i, a, b in links]
     )

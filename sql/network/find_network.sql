@@ -4,5 +4,5 @@
 -- reads:   network; writes: nothing
 select
     network_digest, class_names, n_junctions, n_arms, n_links, n_movements, min_lon, min_lat, max_lon, max_lat,
-    config, put_at
+    seen_side, config, put_at
 from network

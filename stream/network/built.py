@@ -23,7 +23,15 @@ from stream.network.lines import read_lines
 from stream.network.model import F32, I32, NONE, U8, Streets
 from stream.network.movements import build_movements
 from stream.network.osm import ENDINGS, Progress, read_osm
-from stream.network.tables import Parts, arm_table, junction_table, link_table, movement_table, zone_table
+from stream.network.tables import (
+    Parts,
+    arm_table,
+    junction_table,
+    link_table,
+    movement_table,
+    side_of,
+    zone_table,
+)
 from stream.network.turns import Forbidden, lay_restrictions
 from stream.network.zones import Zones, read_zones
 
@@ -46,12 +54,15 @@ class Built:
         Counts of what was built and what was left out, by part and reason.
     digest
         SHA-256 over all arrays and tables.
+    seen_side
+        Driving side that the rings tell, else right; whatever is configured.
     """
 
     streets: Streets
     tables: dict[str, pl.DataFrame]
     report: dict[str, dict[str, int]]
     digest: str
+    seen_side: str
 
 
 def build_network(
@@ -108,7 +119,8 @@ def assemble(roads: raw.RawRoads, zones: Zones | None, settings: Settings) -> Bu
     succ = (succ_start, succ_edge)
     moves = build_movements(graph, succ, junctions, road_inside, arms, forbidden, settings.maneuver)
     controls = read_controls(graph, junctions, links, arms, keys)
-    side, side_counts = infer_side(graph, junctions, keys)
+    seen_side, side_counts = infer_side(graph, junctions)
+    side = side_of(keys, seen_side)
     banned = forbidden.pairs(succ_start, succ_edge)
     streets = _streets(
         graph, junctions, links, arms, gates, road_inside, (*succ, succ_turn, banned), settings
@@ -134,7 +146,7 @@ def assemble(roads: raw.RawRoads, zones: Zones | None, settings: Settings) -> Bu
         "links": _link_counts(tables["link"]),
         "movements": {"built": len(moves.maneuver), **moves.report},
     }
-    return Built(streets, tables, report, _digest(streets, tables))
+    return Built(streets, tables, report, network_digest(streets, tables), seen_side)
 
 
 def _counts(values: list[str]) -> dict[str, int]:
@@ -225,7 +237,7 @@ def _streets(
     )
 
 
-def _digest(streets: Streets, tables: dict[str, pl.DataFrame]) -> str:
+def network_digest(streets: Streets, tables: dict[str, pl.DataFrame]) -> str:
     """Hash all arrays and tables: names, types and values."""
     total = hashlib.sha256(json.dumps([BLOB_VERSION, list(streets.class_names)]).encode())
     for name, array in streets.arrays().items():

@@ -103,8 +103,8 @@ def _ring_is_clockwise(graph: Graph, junctions: Junctions, junction: int) -> boo
     return None if twice_area == 0.0 else twice_area < 0.0
 
 
-def infer_side(graph: Graph, junctions: Junctions, keys: NetworkKeys) -> tuple[Side, dict[str, int]]:
-    """Tell on which side people drive: as configured, else as most rings are driven, else right.
+def infer_side(graph: Graph, junctions: Junctions) -> tuple[Side, dict[str, int]]:
+    """Tell on which side people drive: as most rings are driven, else right.
 
     Mini-roundabouts speak by their direction only where no ring does: theirs is taken as anticlockwise
     when it is not given. Also returns the counts behind the answer.
@@ -119,8 +119,6 @@ def infer_side(graph: Graph, junctions: Junctions, keys: NetworkKeys) -> tuple[S
     n_clockwise = int(np.count_nonzero(mini & raw.MINI_CLOCKWISE))
     if len(mini):
         seen["clockwise_minis"], seen["anticlockwise_minis"] = n_clockwise, len(mini) - n_clockwise
-    if keys.driving_side != "auto":
-        return keys.driving_side, dict(sorted(seen.items()))
     balance = seen["clockwise_rings"] - seen["anticlockwise_rings"]
     if balance == 0:
         balance = seen["clockwise_minis"] - seen["anticlockwise_minis"]

@@ -54,7 +54,12 @@ def _widest(graph: Graph, junctions: Junctions, arms: Arms) -> I32:
     return widest
 
 
-def _zone_columns(
+def side_of(keys: NetworkKeys, seen_side: str) -> str:
+    """Give the driving side of a whole network: as configured, else as seen."""
+    return seen_side if keys.driving_side == "auto" else keys.driving_side
+
+
+def zone_columns(
     lon: F64, lat: F64, zones: Zones | None, side: str, keys: NetworkKeys
 ) -> tuple[list[str], list[str], list[str]]:
     """Give zone name, driving side and time zone of each place."""
@@ -76,7 +81,7 @@ def junction_table(parts: Parts, zones: Zones | None, keys: NetworkKeys) -> pl.D
     """Make the table of junctions."""
     graph, junctions = parts.graph, parts.junctions
     lon, lat = _middle(graph, junctions)
-    names, sides, times = _zone_columns(lon, lat, zones, parts.side, keys)
+    names, sides, times = zone_columns(lon, lat, zones, parts.side, keys)
     n = len(junctions.kind)
     return pl.DataFrame(
         {
@@ -170,7 +175,6 @@ def link_table(parts: Parts, zones: Zones | None, keys: NetworkKeys) -> pl.DataF
         classes.append(name)
         limits.append(default_kmh(keys, name) if limit != limit else limit)
     lon, lat = _link_middles(parts)
-    placed = zones.place(lon, lat).tolist() if zones is not None else [NONE] * n
     none = pl.Series([None] * n, dtype=pl.Float64)
     has_arms = len(arms.link) > 0
     return pl.DataFrame(
@@ -187,11 +191,17 @@ def link_table(parts: Parts, zones: Zones | None, keys: NetworkKeys) -> pl.DataF
             else none,
             "is_open_fwd": opened[:, 0],
             "is_open_back": opened[:, 1],
-            "zone": pl.Series(
-                [zones.names[z] if zones and z != NONE else "" for z in placed], dtype=pl.String
-            ),
+            "lon": lon,
+            "lat": lat,
+            "zone": link_zones(lon, lat, zones),
         }
     )
+
+
+def link_zones(lon: F64, lat: F64, zones: Zones | None) -> pl.Series:
+    """Give the zone of each link, that of the place halfway along it."""
+    placed = zones.place(lon, lat).tolist() if zones is not None else [NONE] * len(lon)
+    return pl.Series([zones.names[z] if zones and z != NONE else "" for z in placed], dtype=pl.String)
 
 
 def movement_table(parts: Parts) -> pl.DataFrame:

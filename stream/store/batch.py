@@ -68,6 +68,26 @@ class BatchTotals:
             )
 
 
+def put_tallies(store: Store, settings: Settings, reference_id: int) -> None:
+    """Name the tallies that the store has not yet."""
+    tallies = settings.tallies
+    named = {
+        "tally": list(tallies),
+        "value": [t.value for t in tallies.values()],
+        "dimensions": [list(t.dimensions) for t in tallies.values()],
+        "reference_id": [reference_id] * len(tallies),
+    }
+    store.run("batch/put_tally", incoming=pl.DataFrame(named))
+
+
+def put_counts(store: Store, batch_id: int, counts: Counts) -> None:
+    """Write counts under a batch's number."""
+    batch = {"batch_id": batch_id}
+    store.run("batch/put_stratum", incoming=counts.stratum)
+    store.run("batch/add_histogram", batch, counts.histogram)
+    store.run("batch/add_moment", batch, counts.moment)
+
+
 class BatchWriter:
     """Writes one batch into the open transaction of a store.
 
@@ -101,20 +121,8 @@ class BatchWriter:
 
     def put_counts(self, counts: Counts, reference_id: int) -> None:
         """Write the batch's tallies."""
-        tallies = self._settings.tallies
-        named = pl.DataFrame(
-            {
-                "tally": list(tallies),
-                "value": [t.value for t in tallies.values()],
-                "dimensions": [list(t.dimensions) for t in tallies.values()],
-                "reference_id": [reference_id] * len(tallies),
-            }
-        )
-        batch = {"batch_id": self.batch_id}
-        self._store.run("batch/put_tally", incoming=named)
-        self._store.run("batch/put_stratum", incoming=counts.stratum)
-        self._store.run("batch/add_histogram", batch, counts.histogram)
-        self._store.run("batch/add_moment", batch, counts.moment)
+        put_tallies(self._store, self._settings, reference_id)
+        put_counts(self._store, self.batch_id, counts)
 
     def finish(
         self,

@@ -6,6 +6,7 @@ configuration, vehicle names) are never added up.
 
 import json
 import shlex
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -21,6 +22,8 @@ if TYPE_CHECKING:
 _FREE = {"source", "privacy", "run"}
 # Parts that shape the network; the others shape what detection and tallies make of it.
 _NETWORK_PARTS = ("network", "gates", "maneuver")
+# Keys that only sort and count what was found; all others shape the roads or what is found in the pings.
+COUNTED = ("tallies", "time", "sections", "maneuver", "network.time_zone", "network.driving_side")
 
 
 @dataclass(frozen=True)
@@ -90,13 +93,14 @@ def find_batch(store: Store, named: str) -> dict[str, Any]:
     return found[0]
 
 
-def _result_keys(settings: Settings) -> dict[str, Any]:
+def result_keys(settings: Settings) -> dict[str, Any]:
+    """Give the keys that change a result."""
     return settings.model_dump(mode="json", exclude=_FREE)
 
 
 def network_config(settings: Settings) -> str:
     """Give the keys that shape a network as JSON, for `put_network`."""
-    kept = {name: value for name, value in _result_keys(settings).items() if name in _NETWORK_PARTS}
+    kept = {name: value for name, value in result_keys(settings).items() if name in _NETWORK_PARTS}
     return json.dumps(kept)
 
 
@@ -129,31 +133,50 @@ def check_config(store: Store, settings: Settings) -> None:
         A result-changing key differs from the one that the network or the earlier batches were made with;
         every such key is named.
     """
-    now = _result_keys(settings)
+    changed = differences(*pinned(store, settings))
+    if not changed:
+        return
+    told = "\n  ".join(changed)
+    if "config" not in store.meta():
+        raise StoreError(
+            f"{store.path}: its network was built with another configuration:\n  {told}"
+            "\nrun `turntally network EXTRACT` again, or put these keys back"
+        )
+    mend = "put these keys back, or ingest into another --store"
+    if not uncounted(changed):
+        mend = "put these keys back, or run `turntally retally` to count what is in anew"
+    raise StoreError(f"{store.path}: its batches were made with another configuration:\n  {told}\n{mend}")
+
+
+def pinned(store: Store, settings: Settings) -> tuple[dict[str, Any], dict[str, Any]]:
+    """Give the result-changing keys that the store is held to, and those of the settings beside them.
+
+    Before the first batch these are the keys of the network alone; none where it doesn't tell.
+    """
+    now = result_keys(settings)
     kept = store.meta().get("config")
     if kept is not None:
-        changed = differences(json.loads(kept), now)
-        if changed:
-            raise StoreError(
-                f"{store.path}: its batches were made with another configuration:\n  "
-                + "\n  ".join(changed)
-                + "\nput these keys back, or ingest into another --store"
-            )
-        return
+        return json.loads(kept), now
     built = store.rows("network/find_network")
     if built and built[0]["config"]:
-        changed = differences(json.loads(built[0]["config"]), {k: now[k] for k in _NETWORK_PARTS})
-        if changed:
-            raise StoreError(
-                f"{store.path}: its network was built with another configuration:\n  "
-                + "\n  ".join(changed)
-                + "\nrun `turntally network EXTRACT` again, or put these keys back"
-            )
+        return json.loads(built[0]["config"]), {k: now[k] for k in _NETWORK_PARTS}
+    return {}, {}
+
+
+def is_under(difference: str, keys: Sequence[str]) -> bool:
+    """Tell whether a line of `differences` is about one of some keys, or a key below it."""
+    key = difference.partition(":")[0]
+    return any(key == one or key.startswith(f"{one}.") for one in keys)
+
+
+def uncounted(changed: Sequence[str]) -> list[str]:
+    """Give those differences that counting the stored rows anew can't bring about."""
+    return [one for one in changed if not is_under(one, COUNTED)]
 
 
 def pin_config(store: Store, settings: Settings, key_id: str) -> None:
     """Write down, within the first batch, what all later ones are held to."""
     held = store.meta()
     if "config" not in held:
-        store.put_meta("config", json.dumps(_result_keys(settings)))
+        store.put_meta("config", json.dumps(result_keys(settings)))
         store.put_meta("key_id", key_id)

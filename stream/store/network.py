@@ -19,7 +19,8 @@ def _refuse(store: Store, old: str, new: str) -> None:
     if n:
         raise StoreError(
             f"{store.path}: holds {n} batches on network {old}, the one given is {new}; "
-            "results of two networks don't mix: name another file with --store"
+            "results of two networks don't mix: name another file with --store; "
+            "where only zones differ, run `turntally retally --zones FILE`"
         )
 
 
@@ -58,6 +59,7 @@ def put_network(store: Store, built: "Built", config: str = "") -> None:
         "min_lat": int(np.min(lat)) * 1e-7,
         "max_lon": int(np.max(lon)) * 1e-7,
         "max_lat": int(np.max(lat)) * 1e-7,
+        "seen_side": built.seen_side,
         "config": config,
         "put_us": now_us(),
     }

@@ -10,7 +10,7 @@ from stream.tally.bins import (
     quantile_ms,
     upper_ms,
 )
-from stream.tally.count import Counts, add_counts, count_passages, count_sections, stratum_number
+from stream.tally.count import Adder, Counts, add_counts, count_passages, count_sections, stratum_number
 from stream.tally.ranks import limit_ranks
 from stream.tally.reference import pace_ms, traversal_ms, unimpeded_ms
 from stream.tally.strata import DIMENSIONS, check_tallies, dimension, needed_columns, with_local_time
@@ -19,6 +19,7 @@ __all__ = [
     "DIMENSIONS",
     "EDGES_MS",
     "N_BINS",
+    "Adder",
     "Counts",
     "add_counts",
     "bin_of",

@@ -21,6 +21,7 @@ _STRATUM = {"tally": pl.String, "stratum_id": pl.Int64, "dimension": pl.String, 
 _HISTOGRAM = {"tally": pl.String, "stratum_id": pl.Int64, "bin_ix": pl.Int32, "n": pl.Int64}
 _MOMENT = {"tally": pl.String, "stratum_id": pl.Int64, "n": pl.Int64, "sum": pl.Int128, "sum_sq": pl.Int128}
 _KEY = ["tally", "stratum_id"]
+_FRAMES = ("stratum", "histogram", "moment")
 
 
 @dataclass(frozen=True)
@@ -68,9 +69,19 @@ class Counts:
 
 def add_counts(parts: Sequence[Counts]) -> Counts:
     """Add any number of counts at once, as a chain of additions would."""
+    total = _added(parts)
+    return Counts(
+        total.stratum.sort([*_KEY, "dimension", "value"]),
+        total.histogram.sort(*_KEY, "bin_ix"),
+        total.moment.sort(_KEY),
+    )
+
+
+def _added(parts: Sequence[Counts]) -> Counts:
+    """Add up, and leave the rows in any order."""
     if not parts:
         return Counts.empty()
-    stratum = pl.concat([p.stratum for p in parts]).unique().sort([*_KEY, "dimension", "value"])
+    stratum = pl.concat([p.stratum for p in parts]).unique()
     twice = stratum.filter(stratum.select(*_KEY, "dimension").is_duplicated())
     if twice.height:
         raise RuntimeError(
@@ -79,7 +90,40 @@ def add_counts(parts: Sequence[Counts]) -> Counts:
         )
     histogram = pl.concat([p.histogram for p in parts]).group_by(*_KEY, "bin_ix").agg(pl.col("n").sum())
     moment = pl.concat([p.moment for p in parts]).group_by(_KEY).agg(pl.col("n", "sum", "sum_sq").sum())
-    return Counts(stratum, histogram.sort(*_KEY, "bin_ix"), moment.sort(_KEY))
+    return Counts(stratum, histogram, moment)
+
+
+class Adder:
+    """Counts many slices of rows, in parts of about doubling size: the whole is not copied for each slice.
+
+    Parameters
+    ----------
+    settings
+        As for `count_passages` and `count_sections`, which count a single slice.
+    """
+
+    def __init__(self, settings: Settings) -> None:
+        check_tallies(settings.tallies)
+        self._settings = settings
+        self._parts: list[Counts] = []
+
+    def add_passages(self, passages: pl.DataFrame) -> None:
+        """Count passages in."""
+        self._add(_passages(passages, self._settings))
+
+    def add_sections(self, sections: pl.DataFrame) -> None:
+        """Count sections in."""
+        self._add(_sections(sections, self._settings))
+
+    def _add(self, counts: Counts) -> None:
+        parts = self._parts
+        parts.append(counts)
+        while len(parts) > 1 and parts[-2].histogram.height < 2 * parts[-1].histogram.height:
+            parts[-2:] = [_added(parts[-2:])]
+
+    def sum(self) -> Counts:
+        """Give the sum of all that was taken in."""
+        return add_counts(self._parts)
 
 
 def _number(text: str) -> int:
@@ -107,18 +151,20 @@ def _count_tally(rows: pl.DataFrame, name: str, dimensions: Sequence[str]) -> Co
             pl.col("value_ms").cast(pl.Int128).sum().alias("sum"),
             pl.col("value_ms").cast(pl.Int128).pow(2).sum().alias("sum_sq"),
         )
-        .with_columns(value_of(DIMENSIONS[d]).alias(f"={d}") for d in named)
         .collect()
     )
     keys = [f"={d}" for d in named]
-    strata = cells.select(keys).unique()
-    numbers = [stratum_number(name, dict(zip(named, row, strict=True))) for row in strata.iter_rows()]
+    strata = cells.select(raw).unique().with_columns(value_of(DIMENSIONS[d]).alias(f"={d}") for d in named)
+    texts = strata.select(keys).iter_rows()
+    numbers = [stratum_number(name, dict(zip(named, row, strict=True))) for row in texts]
     strata = strata.with_columns(
         pl.Series("stratum_id", numbers, dtype=pl.Int64), pl.lit(name).alias("tally")
     )
-    cells = cells.join(strata, on=keys, how="left")
-    stratum = strata.rename({f"={d}": d for d in named}).unpivot(
-        named, index=_KEY, variable_name="dimension", value_name="value"
+    cells = cells.join(strata.select(*raw, *_KEY), on=raw, how="left")
+    stratum = (
+        strata.select(*_KEY, *(pl.col(f"={d}").alias(d) for d in named))
+        .unique()
+        .unpivot(named, index=_KEY, variable_name="dimension", value_name="value")
     )
     return Counts(
         stratum.select(pl.col(c).cast(t) for c, t in _STRATUM.items()),
@@ -136,7 +182,18 @@ def _count(rows: pl.DataFrame, value_ms: pl.Series, tallies: Mapping[str, Tally]
         pl.Series("value_ms", values, dtype=pl.Int64),
         pl.Series("bin_ix", bin_of(values).astype(np.int32)),
     )
-    return add_counts([_count_tally(read, name, t.dimensions) for name, t in wanted.items()])
+    parts = [_count_tally(read, name, t.dimensions) for name, t in wanted.items()]
+    return Counts(*(pl.concat([getattr(p, kind) for p in parts]) for kind in _FRAMES))
+
+
+def _passages(passages: pl.DataFrame, settings: Settings) -> Counts:
+    return _count(passages, passages["delay_ms"], settings.tallies, "delay")
+
+
+def _sections(sections: pl.DataFrame, settings: Settings) -> Counts:
+    long = sections.filter((pl.col("path_m") >= settings.sections.min_m) & (pl.col("path_m") > 0))
+    pace = pl.Series(pace_ms(long["duration_ms"].to_numpy(), long["path_m"].to_numpy()))
+    return _count(long, pace, settings.tallies, "pace")
 
 
 def count_passages(passages: pl.DataFrame, settings: Settings) -> Counts:
@@ -158,7 +215,7 @@ def count_passages(passages: pl.DataFrame, settings: Settings) -> Counts:
         A tally names a dimension that there is none of.
     """
     check_tallies(settings.tallies)
-    return _count(passages, passages["delay_ms"], settings.tallies, "delay")
+    return add_counts([_passages(passages, settings)])
 
 
 def count_sections(sections: pl.DataFrame, settings: Settings) -> Counts:
@@ -179,6 +236,4 @@ def count_sections(sections: pl.DataFrame, settings: Settings) -> Counts:
         A tally names a dimension that there is none of.
     """
     check_tallies(settings.tallies)
-    long = sections.filter((pl.col("path_m") >= settings.sections.min_m) & (pl.col("path_m") > 0))
-    pace = pl.Series(pace_ms(long["duration_ms"].to_numpy(), long["path_m"].to_numpy()))
-    return _count(long, pace, settings.tallies, "pace")
+    return add_counts([_sections(sections, settings)])

@@ -23,7 +23,7 @@ COLUMNS = {
     "limit_kmh limit_in_kmh limit_out_kmh has_limit link_ix link_m entry_gate_m exit_gate_m entry_lon1 "
     "entry_lat1 entry_lon2 entry_lat2 exit_lon1 exit_lat1 exit_lon2 exit_lat2",
     "link": "link_ix arm_from_ix arm_to_ix length_m class limit_kmh middle_fwd_m middle_back_m is_open_fwd "
-    "is_open_back zone",
+    "is_open_back lon lat zone",
     "movement": "junction_ix junction_id arm_in arm_out arm_in_ix arm_out_ix turn_deg maneuver inside_m "
     "is_banned is_timed",
     "zone": "zone_ix zone time_zone driving_side",

@@ -3,6 +3,7 @@
 import re
 import xml.etree.ElementTree as ET
 from collections.abc import Iterator
+from dataclasses import replace
 from html.parser import HTMLParser
 from pathlib import Path
 from typing import Any
@@ -155,7 +156,7 @@ def test_names_are_escaped(built: Built, fresh_store: Store, tmp_path: Path) -> 
     """A zone or batch named like markup stays text."""
     evil = "<b>&'\""
     tables = {**built.tables, "junction": built.tables["junction"].with_columns(zone=pl.lit(evil))}
-    zoned = Built(built.streets, tables, built.report, built.digest)
+    zoned = replace(built, tables=tables)
     fill(fresh_store, zoned, PLAIN, found_at_random(built, 300, 30, 3), evil)
     write_report(fresh_store, tmp_path / "r.html", PLAIN)
     text = (tmp_path / "r.html").read_text(encoding="utf-8")
