@@ -37,7 +37,10 @@ class _Guarded(TyperGroup):
                 "lower run.chunk_rows or run.threads, or give the process more memory"
             )
             raise typer.Exit(StreamError.exit_code) from err
-        except KeyboardInterrupt as err:
+        except BaseException as err:
+            # A compiled library at work hands an interrupt on in an exception of its own that quotes it.
+            if not isinstance(err, KeyboardInterrupt) and "KeyboardInterrupt" not in str(err):
+                raise
             warn("interrupted; the store stands at its last commit")
             raise typer.Exit(_INTERRUPTED) from err
 

@@ -29,6 +29,7 @@ from tests.job import STORE, Stage, differing, finish, holds, set_back, spread, 
 
 pytestmark = pytest.mark.skipif(not can_fork(), reason="needs forks and signals")
 NOBODY = 65534
+FORMS = ("csv.gz", "ndjson", "parquet")
 SEED = 7
 
 
@@ -145,7 +146,7 @@ def test_second_process_is_refused(
     finish(forks, folder, stages[2])
 
 
-@pytest.mark.parametrize("form", ["csv", "csv.gz", "ndjson", "parquet"])
+@pytest.mark.parametrize("form", ["csv", *(pytest.param(f, marks=pytest.mark.slow) for f in FORMS)])
 @pytest.mark.parametrize("step", ["before begin", "before Detector.feed"])
 @pytest.mark.parametrize("what", ["truncate", "append", "replace", "remove"])
 def test_file_that_changes_meanwhile_is_refused(

@@ -55,6 +55,17 @@ def raising(error: BaseException) -> Any:
     return fail
 
 
+class Panic(BaseException):
+    """What a library in another language raises when an interrupt meets it."""
+
+
+INTERRUPTED = "turntally: interrupted; the store stands at its last commit\n"
+OUT_OF_MEMORY = (
+    "turntally: out of memory; the store stands at its last commit: lower run.chunk_rows or run.threads, "
+    "or give the process more memory\n"
+)
+
+
 @pytest.mark.parametrize(
     ("error", "code", "said"),
     [
@@ -62,7 +73,9 @@ def raising(error: BaseException) -> Any:
         (InputError("row 3: no time"), 1, "turntally: row 3: no time\n"),
         (ConfigError("key x"), 2, "turntally: key x\n"),
         (StreamError("else"), 1, "turntally: else\n"),
-        (KeyboardInterrupt(), 130, "turntally: interrupted; the store stands at its last commit\n"),
+        (KeyboardInterrupt(), 130, INTERRUPTED),
+        (Panic("`unwrap()` on an `Err`: PyErr { type: <class 'KeyboardInterrupt'> }"), 130, INTERRUPTED),
+        (MemoryError(), 1, OUT_OF_MEMORY),
     ],
     ids=lambda value: type(value).__name__ if isinstance(value, BaseException) else "",
 )
@@ -84,9 +97,10 @@ def test_main_turns_errors_into_exit_codes(
 
 def test_main_lets_our_own_faults_through(store: str, monkeypatch: pytest.MonkeyPatch) -> None:
     """A fault of the program is not dressed up as one of the user's."""
-    monkeypatch.setattr("stream.store.status.status", raising(RuntimeError("rows don't add up")))
-    with pytest.raises(RuntimeError, match="add up"):
-        main(["status", "--store", store])
+    for error in (RuntimeError("rows don't add up"), Panic("they don't add up")):
+        monkeypatch.setattr("stream.store.status.status", raising(error))
+        with pytest.raises(type(error), match="add up"):
+            main(["status", "--store", store])
 
 
 @pytest.mark.parametrize(("error", "code"), [(KeyboardInterrupt(), 130), (InputError("b.csv: broken"), 1)])
