@@ -1,6 +1,9 @@
 """The whole job on the invented town: build, drive, take in, and set what was measured beside the truth."""
 
 import json
+import os
+import subprocess
+import sys
 import time
 from collections.abc import Callable
 from dataclasses import dataclass, field
@@ -21,6 +24,7 @@ from stream.demo.rules import LEVEL, town_roads
 from stream.demo.town import TIME_ZONE, UTC_OFFSET_S, build_plan
 from stream.demo.truth import true_passages
 from stream.demo.write import Receivers, receive, vehicle_intervals, write_pings
+from stream.detect.ahead import is_compiled
 from stream.errors import InputError
 from stream.ingest import ingest
 from stream.network import Built, build_network
@@ -214,6 +218,20 @@ def prepare_demo(
     }
 
 
+def _compile_aside() -> "subprocess.Popen[bytes] | None":
+    """Begin to compile in another process; None where nothing is to compile.
+
+    Its result is the cache on disk: wait for its end before the pass is needed. Should it fail, the pass is
+    compiled when it is first used.
+    """
+    if is_compiled():
+        return None
+    code = "from stream.detect.ahead import compile_here; compile_here()"
+    env = {**os.environ, "PYTHONPATH": os.pathsep.join(p or str(Path.cwd()) for p in sys.path)}
+    quiet = subprocess.DEVNULL
+    return subprocess.Popen([sys.executable, "-c", code], env=env, stdin=quiet, stdout=quiet, stderr=quiet)
+
+
 def run_demo(
     into: Path,
     days: int | None = None,
@@ -257,6 +275,7 @@ def run_demo(
     paths = _paths(into, demo)
     _make_room(into, paths)
     clock = _Clock()
+    aside = _compile_aside()
     plan = build_plan(drive_on == "left")
     built = _build(plan, paths, settings)
     clock.stop("network")
@@ -265,6 +284,9 @@ def run_demo(
     def tell(at: "Progress") -> None:
         show("taking in", at.batch_ix + at.done / max(at.total, 1), at.n_batches, f"{at.passages:,} passages")
 
+    if aside is not None:
+        aside.wait()
+    clock.stop("compile")
     batches = ingest(paths.store, paths.pings, settings, close=True, progress=tell)
     clock.stop("ingest")
     true, seen = _measure(paths, settings)

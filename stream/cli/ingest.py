@@ -69,10 +69,9 @@ def ingest(
 
 def note_compiling(session: Session) -> None:
     """Say that the wait to come is compiling, unless compiled code of this version is on disk."""
-    from stream.detect import fused
+    from stream.detect.ahead import is_compiled
 
-    cache: Any = getattr(fused.pass_kernel, "_cache", None)  # None: compiling is switched off
-    if cache is not None and not cache._cache_file._load_index():
+    if not is_compiled():
         session.note("compiling the kernels, the first time only: up to a minute")
 
 
