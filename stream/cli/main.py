@@ -13,7 +13,7 @@ import typer
 from typer.core import TyperGroup
 
 from stream import __version__
-from stream.cli import export, ingest, keep, look, network, showcase
+from stream.cli import export, ingest, keep, look, network, recount, showcase
 from stream.cli.say import Session, warn
 from stream.errors import StreamError
 
@@ -90,6 +90,7 @@ app.command("audit")(look.audit)
 app.command("snapshot")(keep.snapshot)
 app.command("retract")(keep.retract)
 app.command("compact")(keep.compact)
+app.command("retally")(recount.retally)
 app.command("quantiles")(look.quantiles)
 app.command("export")(export.export)
 app.command("report")(export.report)

@@ -42,11 +42,12 @@ class RowCounter:
     def held(self, holder_id: int) -> Counts:
         """Count all that the histograms under one batch's number stand for: its own, or its month's."""
         total = Adder(self._settings)
+        kinds = {tally.value for tally in self._settings.tallies.values()}
         keys = self._movement.select("junction_id", "arm_in", "arm_out", "ix")
-        for part in self._slices("retally/passages_of", holder_id, keys):
+        for part in self._slices("retally/passages_of", holder_id, keys) if "delay" in kinds else ():
             total.add_passages(self._known(part, self._movement, "delay"))
         keys = self._arm.select("junction_id", "arm", "ix")
-        for part in self._slices("retally/sections_of", holder_id, keys):
+        for part in self._slices("retally/sections_of", holder_id, keys) if "pace" in kinds else ():
             total.add_sections(self._known(part, self._arm, "pace"))
         return total.sum()
 
