@@ -14,10 +14,13 @@ from typer.core import TyperGroup
 
 from stream import __version__
 from stream.cli import export, ingest, keep, look, network, recount, showcase
+from stream.cli.interrupt import Watch
 from stream.cli.say import Session, warn
 from stream.errors import StreamError
 
 _INTERRUPTED = 130
+# What libraries say where a thread gets no memory.
+_NO_THREAD = ("start new thread", "spawn threads", "spawn worker thread", "launch worker thread")
 _WITH_VALUE = ("--store", "--config")
 _FLAGS = ("--quiet", "--json")
 
@@ -26,23 +29,33 @@ class _Guarded(TyperGroup):
     """Turns what a user can mend into a message and an exit code."""
 
     def invoke(self, ctx: Any) -> Any:
-        try:
-            return super().invoke(ctx)
-        except StreamError as err:
-            warn(str(err))
-            raise typer.Exit(err.exit_code) from err
-        except MemoryError as err:
-            warn(
-                "out of memory; the store stands at its last commit: "
-                "lower run.chunk_rows or run.threads, or give the process more memory"
-            )
-            raise typer.Exit(StreamError.exit_code) from err
-        except BaseException as err:
-            # A compiled library at work hands an interrupt on in an exception of its own that quotes it.
-            if not isinstance(err, KeyboardInterrupt) and "KeyboardInterrupt" not in str(err):
+        with Watch() as interrupt:
+            try:
+                return super().invoke(ctx)
+            except typer.Exit:
                 raise
-            warn("interrupted; the store stands at its last commit")
-            raise typer.Exit(_INTERRUPTED) from err
+            except BaseException as err:
+                code = _told(err, interrupt.has_come)
+                if code is None:
+                    raise
+                raise typer.Exit(code) from err
+
+
+def _told(err: BaseException, is_interrupted: bool) -> int | None:
+    """Say what ended a command and give its exit code; None for a fault of our own."""
+    if is_interrupted or isinstance(err, KeyboardInterrupt):
+        warn("interrupted; the store stands at its last commit")
+        return _INTERRUPTED
+    if isinstance(err, StreamError):
+        warn(str(err))
+        return err.exit_code
+    if isinstance(err, MemoryError) or any(said in str(err) for said in _NO_THREAD):
+        warn(
+            "out of memory; the store stands at its last commit: "
+            "lower run.chunk_rows or run.threads, or give the process more memory"
+        )
+        return StreamError.exit_code
+    return None
 
 
 app = typer.Typer(

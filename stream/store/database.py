@@ -51,6 +51,8 @@ def _connect(
             )
         elif "not a valid DuckDB" in text:
             told = "is not a turntally store; name another file with --store"
+        elif "Out of Memory" in text:
+            told = "can't be opened, DuckDB ran out of memory; raise run.memory_mb, or free memory"
         elif "read-only mode" in text or "Permission denied" in text or "Read-only" in text:
             told = "can't be written; mend the rights of file and folder, or name another file with --store"
         else:
@@ -63,10 +65,11 @@ def _interruptible() -> Iterator[None]:
     """Let an interrupt that meets the engine at work be an interrupt, not a fault of the engine."""
     try:
         yield
-    except (duckdb.InterruptException, RuntimeError) as err:
-        if "interrupted" not in str(err).lower():
-            raise
-        raise KeyboardInterrupt from err
+    except (duckdb.Error, RuntimeError) as err:
+        said = str(err)
+        if "interrupted" in said.lower() or "KeyboardInterrupt" in said:
+            raise KeyboardInterrupt from err
+        raise
 
 
 def _mend(err: Exception) -> str:
@@ -193,7 +196,9 @@ class Store:
                 f"{_mend(err)}, then run the command again"
             ) from err
         except duckdb.OutOfMemoryException as err:
-            raise StoreError(f"{self.path}: DuckDB ran out of memory; raise run.memory_mb") from err
+            raise StoreError(
+                f"{self.path}: DuckDB ran out of memory; raise run.memory_mb, or free memory"
+            ) from err
 
     def run(
         self, name: str, params: dict[str, Any] | None = None, incoming: pl.DataFrame | None = None
@@ -252,7 +257,9 @@ class Store:
             with _interruptible():
                 yield from reader
         except duckdb.OutOfMemoryException as err:
-            raise StoreError(f"{self.path}: DuckDB ran out of memory; raise run.memory_mb") from err
+            raise StoreError(
+                f"{self.path}: DuckDB ran out of memory; raise run.memory_mb, or free memory"
+            ) from err
         except (duckdb.IOException, pa.ArrowException) as err:
             raise StoreError(
                 f"{self.path}: can't be read to its end ({str(err).splitlines()[0]}); "

@@ -1,5 +1,7 @@
 """Where the global options may stand, and what an interrupt or a fault ends in."""
 
+import contextlib
+import signal
 from pathlib import Path
 from typing import Any
 
@@ -74,8 +76,8 @@ OUT_OF_MEMORY = (
         (ConfigError("key x"), 2, "turntally: key x\n"),
         (StreamError("else"), 1, "turntally: else\n"),
         (KeyboardInterrupt(), 130, INTERRUPTED),
-        (Panic("`unwrap()` on an `Err`: PyErr { type: <class 'KeyboardInterrupt'> }"), 130, INTERRUPTED),
         (MemoryError(), 1, OUT_OF_MEMORY),
+        (RuntimeError("can't start new thread"), 1, OUT_OF_MEMORY),
     ],
     ids=lambda value: type(value).__name__ if isinstance(value, BaseException) else "",
 )
@@ -93,6 +95,25 @@ def test_main_turns_errors_into_exit_codes(
         main(["status", "--store", store])
     assert left.value.code == code
     assert capsys.readouterr() == ("", said)
+
+
+@pytest.mark.parametrize("error", [Panic("unwrap"), RuntimeError("no such table"), StoreError("no commit")])
+def test_main_knows_an_interrupt_that_a_library_took_for_a_fault(
+    error: BaseException, store: str, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """An interrupt that is swallowed on its way, and so makes something fail, ends as an interrupt."""
+
+    def swallow(_: object) -> None:
+        with contextlib.suppress(KeyboardInterrupt):
+            signal.raise_signal(signal.SIGINT)
+        raise error
+
+    monkeypatch.setattr("stream.store.status.status", swallow)
+    with pytest.raises(SystemExit) as left:
+        main(["status", "--store", store])
+    assert left.value.code == 130
+    assert capsys.readouterr() == ("", INTERRUPTED)
+    assert signal.getsignal(signal.SIGINT) is signal.default_int_handler
 
 
 def test_main_lets_our_own_faults_through(store: str, monkeypatch: pytest.MonkeyPatch) -> None:
