@@ -16,6 +16,7 @@ from stream.store.fleet import NEVER_US, Pings
 
 I64 = NDArray[np.int64]
 Mask = NDArray[np.bool_]
+LATE_SHARE = 0.2  # late rows, above which a batch is refused, or is no late part of those before it
 PARTLY_SHARE = 0.01  # rows newer than all that is in, above which a batch is no backfill
 
 
@@ -27,13 +28,19 @@ class OtherKindError(Exception):
         self.is_backfill = is_backfill
 
 
+def _is_backfill(n_rows: int, n_older: int, n_apart: int, n_newer: int) -> bool:
+    """Tell a batch that is older than what is in from one with some late rows."""
+    return n_newer <= PARTLY_SHARE * n_rows and (n_apart > 0 or n_older > LATE_SHARE * n_rows)
+
+
 class Standing:
     """Looks at the pings of one batch before they are taken in.
 
     Attributes
     ----------
     is_backfill : None until a chunk brings a vehicle that is known
-    n_older : pings older than the newest one of their vehicle and farther than a trip's silence from any
+    n_older : pings older than the newest one of their vehicle, at times that are not in
+    n_apart : those of them that are farther than a trip's silence from any
     n_newer : pings newer than all that is in
     n_in : pings whose time is in already
     newest_us : newest ping in the store, of batches in order
@@ -49,6 +56,7 @@ class Standing:
         self._any_us, self._backfill_us = (NEVER_US if us is None else int(us) for us in seen)
         self.is_backfill = is_backfill
         self.n_older = 0
+        self.n_apart = 0
         self.n_newer = 0
         self.n_in = 0
 
@@ -70,10 +78,11 @@ class Standing:
         newest = newest_us[vehicle_ix]
         is_behind = t_us < newest - self._lateness_us  # never true of an unknown vehicle
         n_newer = int((t_us > self.newest_us).sum())
-        n_older = self._n_older(vehicle_ix[is_behind], t_us[is_behind], names)
+        n_older, n_apart = self._older(vehicle_ix[is_behind], t_us[is_behind], names)
         if self.is_backfill is None and bool((newest > NEVER_US).any()):
-            self.is_backfill = n_older > 0 and n_newer <= PARTLY_SHARE * len(t_us)
+            self.is_backfill = _is_backfill(len(t_us), n_older, n_apart, n_newer)
         self.n_older += n_older
+        self.n_apart += n_apart
         self.n_newer += n_newer
         if self.is_backfill:
             keep = ~self._is_in(vehicle_ix, t_us, names, only_backfill=False)
@@ -95,18 +104,19 @@ class Standing:
         OtherKindError
             It was taken for the other kind.
         """
-        is_backfill = self.n_older > 0 and self.n_newer <= PARTLY_SHARE * n_rows
+        is_backfill = _is_backfill(n_rows, self.n_older, self.n_apart, self.n_newer)
         if is_backfill != bool(self.is_backfill):
             raise OtherKindError(is_backfill)
         return is_backfill
 
-    def _n_older(self, vehicle_ix: NDArray[np.int32], t_us: I64, names: Sequence[str]) -> int:
-        """Count the pings that are farther than a trip's silence from all that is in of their vehicle."""
+    def _older(self, vehicle_ix: NDArray[np.int32], t_us: I64, names: Sequence[str]) -> tuple[int, int]:
+        """Count the pings at times that are not in, and those farther than a trip's silence from any."""
         if len(t_us) == 0:
-            return 0
+            return 0, 0
         spans = self._spans(vehicle_ix, t_us, names, only_backfill=False)
+        n_older = int((~within(vehicle_ix, t_us, spans)).sum())
         wide = [(pl.col("first_us") - self._max_gap_us), (pl.col("last_us") + self._max_gap_us)]
-        return int((~within(vehicle_ix, t_us, spans.with_columns(wide))).sum())
+        return n_older, int((~within(vehicle_ix, t_us, spans.with_columns(wide))).sum())
 
     def _is_in(
         self, vehicle_ix: NDArray[np.int32], t_us: I64, names: Sequence[str], *, only_backfill: bool

@@ -13,11 +13,10 @@ from numpy.typing import NDArray
 from stream.config import Settings
 from stream.errors import InputError
 from stream.ingest.job import Job
-from stream.ingest.standing import Standing
+from stream.ingest.standing import LATE_SHARE, Standing
 from stream.store.batch import BatchTotals
 from stream.store.ledger import Delivery
 
-LATE_SHARE = 0.2
 _SAMPLE_ROWS = 10_000
 Floats = NDArray[np.float64]
 
