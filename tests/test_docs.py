@@ -31,7 +31,8 @@ def test_every_command_and_option_says_what_it_does() -> None:
     for line in commands().splitlines():
         if line.startswith("| `"):
             assert re.fullmatch(r"\| `.+` \| .{10,} \|", line), line
-    assert len(re.findall(r"^### `turntally \w+.*`\n\n.{10,}$", commands(), re.MULTILINE)) == 8
+    said = re.findall(r"^### `turntally \w+.*`\n\n.{10,}$", commands(), re.MULTILINE)
+    assert len(said) == commands().count("\n### ") >= 8
 
 
 def leaves(model: object, at: str = "") -> set[str]:
