@@ -25,9 +25,18 @@ from stream.detect.records import (
     UNFINISHED_REASONS,
     Found,
 )
+from stream.store.files import statement
 
 MAX_GAP_US = 120_000_000
 GATE_M = 60.0
+_TYPES = {
+    "integer": pl.Int32,
+    "bigint": pl.Int64,
+    "double": pl.Float64,
+    "boolean": pl.Boolean,
+    "varchar": pl.String,
+    "bigint[]": pl.List(pl.Int64),
+}
 INSIDE_M = 10.0
 KMH = 36.0  # 10 m/s
 
@@ -163,6 +172,19 @@ def install(patch: Callable[[str, Any], None]) -> None:
     patch("stream.ingest.job.Detector", StandIn)
     patch("stream.network.streets_to_blobs", lambda _: {"class_names": b"road"})
     patch("stream.network.streets_from_blobs", lambda blobs: blobs)
+    patch("stream.network.network_digest", _digest)
+
+
+def _digest(_: Any, tables: dict[str, pl.DataFrame]) -> str:
+    """Know the plan, as it is, by its name."""
+    names = ("junction", "arm", "link", "movement", "zone")
+    return "two junctions" if all(tables[n].equals(_as_stored(n)) for n in names) else "something else"
+
+
+def _as_stored(table: str) -> pl.DataFrame:
+    """Give a table of the plan with the columns and types of the store."""
+    columns = statement(f"network/put_{table}").incoming
+    return plan().tables[table].select(pl.col(name).cast(_TYPES[kind]) for name, kind in columns)
 
 
 def plan(digest: str = "two junctions") -> Plan:

@@ -9,37 +9,33 @@ from typing import Any
 import polars as pl
 
 from stream.config import Settings, load_settings
+from stream.errors import ConfigError, StoreError
+from stream.store.counting import RowCounter
 from stream.store.database import Store
-from stream.tally import Counts, count_passages, count_sections, with_local_time
-
-_ROWS = 200_000  # passages in memory at once
+from stream.tally import Counts
 
 
 def kept_settings(store: Store) -> Settings | None:
-    """Give the configuration that the batches were made with; None before the first batch."""
+    """Give the configuration that the batches were made with; None before the first batch.
+
+    Raises
+    ------
+    StoreError
+        What the store keeps is no configuration.
+    """
     kept = store.meta().get("config")
-    return None if kept is None else load_settings(over=json.loads(kept))
-
-
-def recount(store: Store, batch_id: int, settings: Settings) -> Counts:
-    """Count the passages and sections of one batch."""
-    total = Counts.empty()
-    wanted = {"batch_id": batch_id}
-    for part in store.batches("recount/passages_of", wanted, batch_rows=_ROWS):
-        passages = pl.DataFrame(part)
-        total += count_passages(with_local_time(passages, settings.time, "entry_us"), settings)
-    for part in store.batches("recount/sections_of", wanted, batch_rows=_ROWS):
-        sections = pl.DataFrame(part)
-        total += count_sections(with_local_time(sections, settings.time, "from_us"), settings)
-    return total
+    try:
+        return None if kept is None else load_settings(over=json.loads(kept))
+    except (ConfigError, ValueError) as err:
+        raise StoreError(
+            f"{store.path}: the configuration that it keeps is damaged ({str(err).splitlines()[0]}); "
+            "put back a copy of the store"
+        ) from err
 
 
 def recount_held(store: Store, batch_id: int, settings: Settings) -> Counts:
     """Count all that the histograms under one batch's number stand for: its own, or its month's."""
-    total = Counts.empty()
-    for (part,) in store.run("recount/parts_of", {"batch_id": batch_id}):
-        total += recount(store, part, settings)
-    return total
+    return RowCounter(store, settings).held(batch_id)
 
 
 def _differ(kept: pl.DataFrame, counted: pl.DataFrame, keys: list[str], values: list[str]) -> pl.DataFrame:
@@ -49,22 +45,22 @@ def _differ(kept: pl.DataFrame, counted: pl.DataFrame, keys: list[str], values: 
     return both.filter(pl.any_horizontal(unlike)).sort(keys)
 
 
-def recount_faults(store: Store) -> list[dict[str, Any]]:
-    """Set every batch's histograms, moments and strata beside those counted again.
+def recount_faults(store: Store, settings: Settings | None) -> list[dict[str, Any]]:
+    """Set every batch's histograms, moments and strata beside those counted again under its configuration.
 
     Returns
     -------
     list of dict
         One per cell that differs: `batch_id`, the key, and each value with its `_recounted` twin.
     """
-    settings = kept_settings(store)
     if settings is None:
         return []
+    counter = RowCounter(store, settings)
     out: list[dict[str, Any]] = []
     known = store.frame("recount/all_stratum")
     for row in store.rows("ledger/all_batch"):
         batch_id = int(row["batch_id"])
-        counted = recount_held(store, batch_id, settings)
+        counted = counter.held(batch_id)
         wanted = {"batch_id": batch_id}
         cells = _differ(
             store.frame("recount/histogram_of", wanted),
