@@ -17,7 +17,7 @@ def retract(
     ctx: typer.Context,
     batch: Annotated[str, typer.Argument(metavar="BATCH", help="Name of the batch, else its number.")],
 ) -> None:
-    """Take a batch back: the newest exactly, an older one with what it gave."""
+    """Take a batch back, with all that it gave."""
     from stream.store import Store
     from stream.store.retract import retract as take_back
 
@@ -52,7 +52,7 @@ def compact(
     ],
     yes: Annotated[bool, typer.Option("--yes", help="Don't ask, not even on a terminal.")] = False,
 ) -> None:
-    """Roll the counts of old batches up by month; quantiles stay the same."""
+    """Roll the counts of old batches up by month."""
     try:
         day = date.fromisoformat(before)
     except ValueError as err:

@@ -2,7 +2,8 @@
 
 Guarantee: the newest batch in order is undone exactly, the carry included: the store is as it was before it.
 An older one loses its own contribution; trips that ran across its edges can't be joined again and are
-counted. The histograms equal the passages that stay, and time is conserved in the trips that stay.
+counted; one that is still open is given up. The histograms equal the passages that stay, and time is
+conserved in the trips that stay.
 """
 
 from typing import Any
@@ -95,14 +96,15 @@ def _cut_out(store: Store, batch_id: int) -> dict[str, int]:
         store.run(f"retract/hand_on_{table}", wanted)
     edges = store.run("retract/edge_batches", wanted)
     lost = store.frame("retract/lost_parts", wanted)
-    opened = _open_trips(store, batch_id, lost)
     for table in ("passage", "section", "unfinished"):
         store.run(f"retract/drop_edge_{table}", wanted)
     store.run("retract/drop_empty_trip", wanted)
     ((n_start, n_end),) = store.run("retract/count_cut", wanted)
     store.run("retract/mend_trip", incoming=lost)
-    if opened.height:
-        store.run("retract/mend_carry", incoming=opened)
+    begun = _begun(store, batch_id)
+    for table in ("passage", "section", "unfinished", "trip"):
+        store.run(f"retract/renumber_{table}", wanted, begun)
+    store.run("retract/end_carry", wanted)
     settings = kept_settings(store)
     assert settings is not None
     for holder_id in sorted(heirs | {row[0] for row in edges}):
@@ -120,12 +122,10 @@ def _cut_out(store: Store, batch_id: int) -> dict[str, int]:
     }
 
 
-def _open_trips(store: Store, batch_id: int, lost: pl.DataFrame) -> pl.DataFrame:
-    """Find what the trips that later states hold open lose."""
-    found = store.frame("retract/open_trips", {"batch_id": batch_id})
-    codes = name_code(found["vehicle"].to_list())
-    numbers = trip_id(codes, found["trip_start_us"].to_numpy().astype(np.int64))
-    keyed = found.with_columns(pl.Series("trip_id", numbers, pl.Int64))
-    return keyed.join(lost, on=["vehicle", "trip_id"]).select(
-        "vehicle", "batch_id", "n_passages", "passage_us", "section_us"
-    )
+def _begun(store: Store, batch_id: int) -> pl.DataFrame:
+    """Find the trips of later batches that began with this one's pings: vehicle, trip_id."""
+    opened = store.frame("retract/open_trips", {"batch_id": batch_id})
+    codes = name_code(opened["vehicle"].to_list())
+    numbers = trip_id(codes, opened["trip_start_us"].to_numpy().astype(np.int64))
+    open_trips = opened.select("vehicle", pl.Series("trip_id", numbers, pl.Int64))
+    return pl.concat([store.frame("retract/ended_trips", {"batch_id": batch_id}), open_trips]).unique()
