@@ -16,7 +16,7 @@ def retally(
         typer.Option(metavar="FILE", help="GeoJSON polygons that take the place of the store's zones."),
     ] = None,
 ) -> None:
-    """Count anew under other tallies, bands, maneuvers or zones, without pings."""
+    """Count anew under other tallies or zones."""
     from stream.store import Store
     from stream.store.retally import retally as count_anew
 
