@@ -14,7 +14,6 @@ from stream.store.database import Store
 from stream.tally import Adder, Counts, needed_columns, with_local_time
 
 _ROWS = 500_000  # in memory at once
-_SLOT_US = 30_000_000  # clocks have stood off UTC by whole half minutes ever since 1970
 _LOCAL = {"hour", "weekday", "month", "day_type", "time_band"}
 _JUNCTION = ("junction_ix", "zone", "driving_side", "time_zone", "control")
 
@@ -65,7 +64,7 @@ class RowCounter:
         read = set(needed_columns(self._settings.tallies, kind))
         given = [c for c in of.columns if c in read or (c == "time_zone" and read & _LOCAL)]
         out = known.hstack(of.select(given)[known["ix"]])
-        return _with_local_time(out, self._settings) if read & _LOCAL else out
+        return with_local_time(out, self._settings.time, "at_us") if read & _LOCAL else out
 
 
 def _numbered(frame: pl.DataFrame) -> pl.DataFrame:
@@ -96,15 +95,3 @@ def _of_arms(store: Store, arm: pl.DataFrame) -> pl.DataFrame:
         "junction_id", "arm", "driving_side", "time_zone",
         pl.coalesce("link_class", "class").alias("class"), pl.coalesce("link_zone", "zone").alias("zone"),
     )  # fmt: skip
-
-
-def _with_local_time(rows: pl.DataFrame, settings: Settings) -> pl.DataFrame:
-    """Add the parts of local time, worked out once for each half minute and time zone that occurs."""
-    slotted = rows.with_columns((pl.col("at_us") // _SLOT_US * _SLOT_US).alias("slot_us"))
-    slots = slotted.select("slot_us", "time_zone").unique()
-    time = settings.time
-    names = {"day_type": list(time.day_types), "time_band": list(time.bands)}
-    local = with_local_time(slots, time, "slot_us").with_columns(
-        pl.col(column).cast(pl.Enum(known)) for column, known in names.items()
-    )
-    return slotted.join(local, on=["slot_us", "time_zone"], how="left", maintain_order="left")

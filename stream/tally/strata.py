@@ -16,6 +16,9 @@ from stream.errors import ConfigError
 
 Kind = Literal["delay", "pace"]
 SECTOR_DEG = 10
+# Since 1970 all clocks have stood off UTC by whole half minutes, and been changed at whole ones.
+SLOT_US = 30_000_000
+_SLOT = "slot_us"
 
 
 @dataclass(frozen=True)
@@ -156,6 +159,8 @@ def _local(at_us: str, zone: str) -> pl.Expr:
 def with_local_time(rows: pl.DataFrame, time: Time, at_us: str) -> pl.DataFrame:
     """Add `hour`, `weekday`, `month` (integers), `day_type` and `time_band` in each row's local time.
 
+    Each is worked out once for each half minute and zone that occurs; rows keep their order.
+
     Parameters
     ----------
     rows
@@ -170,9 +175,16 @@ def with_local_time(rows: pl.DataFrame, time: Time, at_us: str) -> pl.DataFrame:
     ConfigError
         A time zone that is not in the IANA database.
     """
-    out = rows.with_columns(pl.lit(None, dtype=pl.Int8).alias(part) for part in ("hour", "weekday", "month"))
-    for zone in rows["time_zone"].unique().sort():
-        local = _local(at_us, zone)
+    slotted = rows.with_columns((pl.col(at_us) // SLOT_US * SLOT_US).alias(_SLOT))
+    slots = slotted.select(_SLOT, "time_zone").unique()
+    local = _local_parts(slots, time)
+    return slotted.join(local, on=[_SLOT, "time_zone"], how="left", maintain_order="left").drop(_SLOT)
+
+
+def _local_parts(slots: pl.DataFrame, time: Time) -> pl.DataFrame:
+    out = slots.with_columns(pl.lit(None, dtype=pl.Int8).alias(part) for part in ("hour", "weekday", "month"))
+    for zone in slots["time_zone"].unique().sort():
+        local = _local(_SLOT, zone)
         here = pl.col("time_zone") == zone
         values = {"hour": local.dt.hour(), "weekday": local.dt.weekday(), "month": local.dt.month()}
         out = out.with_columns(

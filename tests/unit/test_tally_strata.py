@@ -1,7 +1,9 @@
 """Dimensions: values, local time, and what an unknown one gets."""
 
+import random
 from collections.abc import Callable
-from datetime import UTC, datetime
+from datetime import UTC, datetime, timedelta
+from zoneinfo import ZoneInfo, available_timezones
 
 import polars as pl
 import pytest
@@ -9,7 +11,7 @@ import pytest
 from stream.config import Settings
 from stream.errors import ConfigError
 from stream.tally import DIMENSIONS, check_tallies, dimension, with_local_time
-from stream.tally.strata import needed_columns, sector_of, value_of
+from stream.tally.strata import SLOT_US, needed_columns, sector_of, value_of
 from tests.oracle import tally as oracle
 
 
@@ -158,3 +160,17 @@ def test_needed_columns_of_default_tallies(settings: Settings) -> None:
     """Default tallies read stored columns alone, the turn angle for its sector."""
     assert "turn_deg" in needed_columns(settings.tallies, "delay")
     assert needed_columns(settings.tallies, "pace") == ["zone", "class"]
+
+
+def test_half_minute_has_one_offset_in_every_zone() -> None:
+    """Clocks stand off UTC by whole half minutes since 1970 (source: IANA database, standard library)."""
+    dice = random.Random(31)
+    for name in sorted(available_timezones()):
+        zone = ZoneInfo(name)
+        for _ in range(40):
+            start = datetime.fromtimestamp(dice.randrange(0, 2**31, SLOT_US // 1_000_000), UTC)
+            ends = [start, start + timedelta(microseconds=SLOT_US - 1)]
+            one, other = (at.astimezone(zone).utcoffset() for at in ends)
+            assert one == other, (name, start)
+            assert one is not None
+            assert one % timedelta(microseconds=SLOT_US) == timedelta(0), (name, start)
