@@ -42,7 +42,7 @@ def run_audit(store: Store) -> list[dict[str, Any]]:
         ),
         (
             "digests_again",
-            "find digests of network and configuration that are not those of what is stored",
+            "find digests of bins, network and configuration that are not those of what is stored",
             damaged + digest_faults(store, settings),
         ),
         (

@@ -16,6 +16,7 @@ import polars as pl
 
 from stream.errors import StoreError
 from stream.store.files import names_in, statement, views_in_order
+from stream.tally import BINS_DIGEST
 
 if TYPE_CHECKING:
     import pyarrow as pa
@@ -181,6 +182,7 @@ class Store:
             self.put_meta("format_version", str(FORMAT_VERSION))
             self.put_meta("created_us", str(made_us))
             self.put_meta("reference_id", "1")
+            self.put_meta("bins", BINS_DIGEST)
             first = {"reference_id": 1, "basis": FIRST_REFERENCE, "made_us": made_us}
             self.run("meta/put_reference", first)
 
@@ -305,6 +307,21 @@ class Store:
     def put_meta(self, key: str, value: str) -> None:
         """Write one thing that the store says of itself."""
         self.run("meta/put_meta", {"key": key, "value": value})
+
+    def check_bins(self) -> None:
+        """Refuse histograms that were counted in other bins than this program's.
+
+        Raises
+        ------
+        StoreError
+            They were.
+        """
+        held = self.meta().get("bins")
+        if held != BINS_DIGEST:
+            raise StoreError(
+                f"{self.path}: its histograms have the bins {held}, this program counts in {BINS_DIGEST}; "
+                "run `turntally retally` to count what is in anew"
+            )
 
     def streets(self) -> "Streets":
         """Load the arrays that detection reads.

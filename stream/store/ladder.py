@@ -74,10 +74,11 @@ def find_tally(store: Store, name: str) -> KeptTally:
     Raises
     ------
     StoreError
-        The store holds no batch yet.
+        The store holds no batch yet, or histograms in other bins.
     ConfigError
         It keeps no such tally; the nearest one is named.
     """
+    store.check_bins()
     kept = kept_tallies(store)
     if not kept:
         raise StoreError(f"{store.path}: holds no counts yet; run `turntally ingest FILE...` first")

@@ -130,9 +130,10 @@ def check_config(store: Store, settings: Settings) -> None:
     Raises
     ------
     StoreError
-        A result-changing key differs from the one that the network or the earlier batches were made with;
-        every such key is named.
+        A result-changing key differs from the one that the network or the earlier batches were made with,
+        and every such key is named; or the histograms have other bins.
     """
+    store.check_bins()
     changed = differences(*pinned(store, settings))
     if not changed:
         return

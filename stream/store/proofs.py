@@ -12,7 +12,7 @@ from stream.config import Settings
 from stream.errors import NetworkError, StoreError
 from stream.store.database import Store
 from stream.store.vehicles import name_code, trip_id
-from stream.tally import with_local_time
+from stream.tally import BINS_DIGEST, with_local_time
 
 _TABLES = ("junction", "arm", "link", "movement", "zone")  # in the order of the digest
 _PART = ["n_passages", "passage_us", "section_us"]
@@ -20,7 +20,7 @@ _NAMES = ["day_type", "time_band"]
 
 
 def digest_faults(store: Store, settings: Settings | None) -> list[dict[str, Any]]:
-    """Work the digests of network and configuration out again.
+    """Work the digests of bins, network and configuration out again.
 
     Returns
     -------
@@ -30,7 +30,10 @@ def digest_faults(store: Store, settings: Settings | None) -> list[dict[str, Any
     held = store.rows("network/find_network")
     if not held:
         return []
-    pairs = [("network", held[0]["network_digest"], _network(store))]
+    pairs = [
+        ("bins", store.meta().get("bins", ""), BINS_DIGEST),
+        ("network", held[0]["network_digest"], _network(store)),
+    ]
     if settings is not None:
         pairs += [
             (f"configuration of batch {row['batch_id']}", row["config_digest"], settings.digest())

@@ -1,4 +1,4 @@
-"""New tallies, time bands, day types, maneuvers, zones or reference, from what is stored: no ping is read.
+"""New tallies, bins, time bands, maneuvers, zones or reference, from what is stored: no ping is read.
 
 Guarantee: one transaction, so that the old counts stand until the new ones are committed; afterwards the
 store is, row for row, what a fresh ingest of the same batches under the new configuration would have made.
@@ -18,7 +18,7 @@ from stream.store.batch import put_counts, put_tallies
 from stream.store.counting import RowCounter
 from stream.store.database import Store
 from stream.store.ledger import differences, is_under, network_config, pinned, result_keys, uncounted
-from stream.tally import check_tallies, unimpeded_ms, with_local_time
+from stream.tally import BINS_DIGEST, check_tallies, unimpeded_ms, with_local_time
 
 _OF_ZONES = ("network.time_zone", "network.driving_side")
 _TABLES = ("junction", "arm", "link", "movement", "zone")  # in the order of the digest
@@ -71,6 +71,9 @@ def retally(
         is_retimed = is_moved or any(one.startswith("time.") for one in changed)
         at = _Progress(store, progress, n_passes=2 if n_other or is_retimed else 1)
         rewritten = _write_anew(store, settings, reference_id, at) if n_other or is_retimed else 0
+        store.run("retally/drop_bin")
+        store.run("view/bin")
+        store.put_meta("bins", BINS_DIGEST)
         strata = _count_anew(store, settings, reference_id, at) if is_known else {}
         digest = store.rows("network/find_network")[0]["network_digest"]
         store.run("retally/mark_batch", {"config_digest": settings.digest(), "network_digest": digest})

@@ -1,6 +1,7 @@
 """Counting: fixed bins, dimensions, unimpeded times, exact sums."""
 
 from stream.tally.bins import (
+    BINS_DIGEST,
     EDGES_MS,
     N_BINS,
     bin_of,
@@ -16,6 +17,7 @@ from stream.tally.reference import pace_ms, traversal_ms, unimpeded_ms
 from stream.tally.strata import DIMENSIONS, check_tallies, dimension, needed_columns, with_local_time
 
 __all__ = [
+    "BINS_DIGEST",
     "DIMENSIONS",
     "EDGES_MS",
     "N_BINS",

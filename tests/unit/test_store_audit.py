@@ -74,6 +74,7 @@ DAMAGE = {
     "update junction set time_zone = 'Asia/Tokyo'": {"digests_again", "counted_again", "local_time"},
     "update arm set limit_in_kmh = 20": {"digests_again", "delay_follows"},
     "delete from network_blob": {"digests_again"},
+    "update meta set value = 'x' where key = 'bins'": {"digests_again"},
     """update meta set value = replace(value, '"min_m": 50.0', '"min_m": 300.0') where key = 'config'""": {
         "digests_again",
         "counted_again",

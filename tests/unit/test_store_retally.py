@@ -19,6 +19,7 @@ from stream.ingest import ingest
 from stream.network import build_network
 from stream.store import Store, put_network
 from stream.store.audit import run_audit
+from stream.store.ladder import quantile_rows
 from stream.store.ledger import network_config
 from stream.store.retally import retally
 from tests.archive import T0, drive, dump, write
@@ -102,6 +103,27 @@ def test_damaged_counts_are_mended(path: Path, settings: Settings) -> None:
         con.execute("delete from stratum where tally = 'angle'")
     again(path, settings)
     assert dump(path) == before
+
+
+def test_other_bins_are_refused_until_counted_anew(path: Path, tmp_path: Path, settings: Settings) -> None:
+    """Histograms in the bins of another version are neither shown nor added to; retally makes them ours."""
+    before = dump(path)
+    edges = "create or replace view bin as select 0 as bin_ix, 0 as lower_ms, 1 as upper_ms, 0.5 as mid_ms"
+    with duckdb.connect(str(path)) as con:
+        con.execute("update meta set value = 'wider' where key = 'bins'").fetchall()
+        con.execute("update histogram set bin_ix = bin_ix // 2").fetchall()
+        con.execute(edges).fetchall()
+    with pytest.raises(StoreError, match="have the bins wider, this program counts in"):
+        ingest(path, [write(tmp_path / "2.csv", drive("a", 31, T0 + 86_400))], settings)
+    with Store.open(path) as store:
+        with pytest.raises(StoreError, match="run `turntally retally`"):
+            quantile_rows(store, "maneuver", ["maneuver"], {}, settings)
+        retally(store, settings)
+        assert quantile_rows(store, "maneuver", ["maneuver"], {}, settings)
+    assert dump(path) == before
+    # The bin of -3 s: 250 ms wide, its lower edge is part of it (DESIGN, section 7).
+    held = "select distinct lower_ms, upper_ms from histogram join bin using (bin_ix) where tally = 'angle'"
+    assert rows(path, held) == [(-3000, -2750)]
 
 
 @pytest.mark.parametrize(
