@@ -7,7 +7,16 @@ from stream.detect.clean import apart_m
 from stream.detect.passages import Out, enter, leave
 from stream.detect.search import Routes
 from stream.detect.step import Step, has_gate, kept_speed, lay_pieces, place_kept
-from stream.detect.times import LONG_S, cubic_share, drive_s, gate_error_s, long_share, standing
+from stream.detect.times import (
+    AT_GATES,
+    LONG_S,
+    between_gates,
+    cubic_share,
+    drive_s,
+    gate_error_s,
+    long_share,
+    standing,
+)
 from stream.kernel import kernel, spliced
 from stream.network.model import NONE
 from stream.network.routes import StreetIndex
@@ -106,6 +115,10 @@ def gate_time(
                 step.t_us[j + 2] - step.t_us[j + 1] if j + 2 < m else st.leave_us[last] - st.arrive_us[last]
             )
             stands = standing(stay_us, after)
+            if stood == 0.0 and between_gates(index, step, n, step.at_m[j]):
+                stood = AT_GATES
+            if stands == 0.0 and between_gates(index, step, n, step.at_m[j + 1]):
+                stands = AT_GATES
             share = long_share(
                 index, step, n, step.at_m[j], step.at_m[j + 1], gate_m, dt_s, stood, stands, par.drive_share
             )

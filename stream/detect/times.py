@@ -19,6 +19,8 @@ STAND_MPS = 2.0  # slower at a step's end: it may have stood there
 AT_STAY = 6.0
 AT_SLOW = 1.5
 AT_MOUTH = 1.0
+AT_GATES = 0.5
+ON_THE_WAY = 0.5
 NOISE_M = 2.5  # m, of one place against the next, for the error estimate
 
 
@@ -97,17 +99,27 @@ def long_share(
     slack = dt_s - whole
     if slack <= 0.0 or whole <= 0.0:
         return part / whole if whole > 0.0 else 0.5
-    before = stood
-    every = stood + stands
+    before = stood + ON_THE_WAY * part / whole
+    every = stood + stands + ON_THE_WAY
     for i in range(n - 1):
         end = step.start_m[i] + step.to_m[i] - step.from_m[i]
         if from_m <= end <= to_m and mouth_before(index, step, i):
             every += AT_MOUTH
             if end < gate_m:
                 before += AT_MOUTH
-    if every <= 0.0:
-        return part / whole
     return (part + slack * before / every) / dt_s
+
+
+@kernel
+def between_gates(index: StreetIndex, step: Step, n: int, at_m: float) -> bool:
+    """Tell whether a place of a step lies between gates, where vehicles slow down and speed up."""
+    for i in range(n):
+        end = step.start_m[i] + step.to_m[i] - step.from_m[i]
+        if at_m <= end or i == n - 1:
+            e = index.edge[step.edge[i]]
+            chainage = step.from_m[i] + at_m - step.start_m[i]
+            return chainage >= e.inside_from or chainage < e.inside_to
+    return False
 
 
 @kernel

@@ -116,25 +116,26 @@ def test_long_share_grows_with_the_gate(
 
 
 @pytest.mark.parametrize(
-    ("stood", "stands", "gate_m", "share_before"),
+    ("stood", "stands", "gate_m", "before", "every"),
     [
-        (0.0, 0.0, 100.0, 0.0),  # before both mouths, at 120 and 270 m of the step
-        (0.0, 0.0, 200.0, 1 / 2),
-        (0.0, 0.0, 300.0, 1.0),
-        (6.0, 0.0, 100.0, 6 / 8),
-        (0.0, 6.0, 300.0, 2 / 8),
-        (1.5, 1.5, 200.0, 2.5 / 5),
+        (0.0, 0.0, 100.0, 0.0, 2.0),  # before both mouths, at 120 and 270 m of the step
+        (0.0, 0.0, 200.0, 1.0, 2.0),
+        (0.0, 0.0, 300.0, 2.0, 2.0),
+        (6.0, 0.0, 100.0, 6.0, 8.0),
+        (0.0, 6.0, 300.0, 2.0, 8.0),
+        (1.5, 1.5, 200.0, 2.5, 5.0),
     ],
 )
 def test_slack_lies_where_vehicles_stand(
-    stood: float, stands: float, gate_m: float, share_before: float
+    stood: float, stands: float, gate_m: float, before: float, every: float
 ) -> None:
-    """What a long step has more than driving takes is shared among its ends and the mouths on the way."""
+    """What a long step has more than driving takes is shared among its ends, the mouths, and the way."""
     step, n = EAST
-    drive = gate_m / (np.float32(13.9) * 0.8)
-    slack = 60.0 - LONG_M / (np.float32(13.9) * 0.8)
+    drive, whole = (metres / (float(np.float32(13.9)) * 0.8) for metres in (gate_m, LONG_M))
+    on_the_way = 0.5
+    share_before = (before + on_the_way * drive / whole) / (every + on_the_way)
     share = long_share(INDEX, step, n, 0.0, LONG_M, gate_m, 60.0, stood, stands, 0.8)
-    assert abs(share * 60.0 - (drive + slack * share_before)) < 1e-6
+    assert abs(share * 60.0 - (drive + (60.0 - whole) * share_before)) < 1e-6
 
 
 def test_standing_is_told_by_the_stay_before_the_speed() -> None:
