@@ -142,12 +142,18 @@ class _Neighbours:
     """All roads as lines in degrees, with an index to find those near a gate."""
 
     def __init__(self, graph: Graph, links: Links) -> None:
-        points = np.stack([graph.point_lon_e7, graph.point_lat_e7], axis=1) * 1e-7
+        self._base = float(graph.point_lon_e7[0]) * 1e-7
+        east = self.east(graph.point_lon_e7.astype(np.float64) * 1e-7)
+        points = np.stack([east, graph.point_lat_e7 * 1e-7], axis=1)
         road = np.repeat(np.arange(len(graph.point_start) - 1), np.diff(graph.point_start))
         self._roads = np.asarray(shapely.linestrings(points, indices=road), np.object_)
         self._tree = shapely.STRtree(self._roads)
         self._link = np.full(len(self._roads), NONE, np.int32)
         self._link[links.road] = np.repeat(np.arange(len(links.length_m)), np.diff(links.start))
+
+    def east(self, lon: F64) -> F64:
+        """Give longitudes as degrees east of the first point: lines then go on across 180 degrees."""
+        return (lon - self._base + 180.0) % 360.0 - 180.0
 
     def free_m(self, rays: NDArray[np.object_], link: I32) -> F64:
         """Give how far each ray goes before it meets another road, at most its own length.
@@ -196,8 +202,9 @@ def _lines(neighbours: _Neighbours, graph: Graph, arms: Arms, edge: I32, edge_at
         for side, sign in ((0, -1.0), (2, 1.0)):
             # Look twice as far as a line may reach: the line goes halfway to what is met.
             far = 2.0 * HALF_LINE_M * sign
-            ends = np.stack([lon + far * step_lon, lat + far * step_lat], axis=1)
-            rays = shapely.linestrings(np.stack([np.stack([lon, lat], axis=1), ends], axis=1))
+            east = neighbours.east(lon)
+            ends = np.stack([east + far * step_lon, lat + far * step_lat], axis=1)
+            rays = shapely.linestrings(np.stack([np.stack([east, lat], axis=1), ends], axis=1))
             free_m = neighbours.free_m(np.asarray(rays, np.object_), arms.link[rows])
             reach = 0.5 * free_m * sign
             out[rows, side], out[rows, side + 1] = lon + reach * step_lon, lat + reach * step_lat

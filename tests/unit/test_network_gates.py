@@ -172,3 +172,28 @@ def test_gates_across_the_180th_meridian(tmp_path: Path) -> None:
     lon, lat = row["entry_lon1"], row["entry_lat1"]
     assert lon < -179.99
     assert GEOD.inv(*sketch.place[1], lon, lat)[2] == pytest.approx(np.hypot(60, 15), abs=0.1)
+
+
+def line_lengths(folder: Path, lon: float) -> dict[tuple[int, str], float]:
+    """Give the geodesic length of each gate line of a crossing, a street beside one arm, by way and kind."""
+    folder.mkdir()
+    sketch = cross(lon=lon, lat=64.13)
+    sketch.nodes({70: (8.0, 30.0), 71: (8.0, 190.0)})
+    sketch.way(70, [70, 71], {"highway": "residential"})
+    out = {}
+    for row in sketch.build(folder).tables["arm"].to_dicts():
+        for kind in ("entry", "exit"):
+            ends = [row[f"{kind}_{name}"] for name in ("lon1", "lat1", "lon2", "lat2")]
+            if None not in ends:
+                out[row["way_id"], kind] = GEOD.inv(*ends)[2]
+    return out
+
+
+@pytest.mark.parametrize("lon", [179.9999, -179.9999, 180.0])
+def test_gate_lines_are_the_same_across_180_degrees(tmp_path: Path, lon: float) -> None:
+    """Lines stand and reach as they do elsewhere at that latitude (a crossing moved along its parallel)."""
+    here, there = line_lengths(tmp_path / "here", -21.9), line_lengths(tmp_path / "there", lon)
+    assert here.keys() == there.keys()
+    assert len(here) >= 8
+    assert all(there[key] == pytest.approx(metres, abs=0.03) for key, metres in here.items())
+    assert min(here.values()) > 1.0
