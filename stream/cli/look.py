@@ -66,7 +66,7 @@ def _batch_row(one: dict[str, Any]) -> list[str]:
 
 
 def audit(ctx: typer.Context) -> None:
-    """Prove the store against itself: rows, time, histograms, digests."""
+    """Prove the store against itself: rows, time, counts."""
     from stream.store.audit import run_audit
 
     session: Session = ctx.obj
