@@ -50,9 +50,7 @@ def test_unchanged_file_is_let_be(file: Path) -> None:
 
 def test_grown_file_is_refused(file: Path) -> None:
     """Another size is told in bytes."""
-    with pytest.raises(
-        InputError, match=r"a\.csv: changed while .* \(6 bytes, now 8\).*run the"
-    ):
+    with pytest.raises(InputError, match=r"a\.csv: changed while .* \(6 bytes, now 8\).*run the"):
         read(file, lambda: file.write_bytes(b"12345678"))
 
 
