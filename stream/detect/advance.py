@@ -6,7 +6,7 @@ from stream.detect.carry import SECTION
 from stream.detect.clean import apart_m
 from stream.detect.passages import Out, enter, leave
 from stream.detect.search import Routes
-from stream.detect.step import Step, has_gate, kept_speed, lay_pieces, place_kept
+from stream.detect.step import Step, kept_speed, lay_pieces, place_kept
 from stream.detect.times import (
     AT_GATES,
     LONG_S,
@@ -225,12 +225,11 @@ def advance(
     dt_us = st.arrive_us[last] - st.leave_us[first]
     n = lay_pieces(st, at_m, to, to_m, chord_m, dt_us, index, par, routes, step)
     total = step.start_m[n - 1] + step.to_m[n - 1] - step.from_m[n - 1]
-    if has_gate(index, step, n):
-        m = place_kept(st, first, last, index, step, n)
-        cursor = next_gate(index, step, n, 0)
+    cursor = next_gate(index, step, n, 0)
+    m = 2 * (last - first) + 1
+    if cursor != NONE:
+        place_kept(st, first, last, index, step, n)
     else:
-        m = 2 * (last - first) + 1
-        cursor = NONE
         for k in range(first, last + 1):
             i = 2 * (k - first)
             step.t_us[i] = st.arrive_us[k]

@@ -92,18 +92,6 @@ def lay_pieces(
     return add_piece(step, n, to, 0.0, to_m)
 
 
-@spliced
-def has_gate(index: StreetIndex, step: Step, n: int) -> bool:
-    """Tell whether a step passes a gate."""
-    for i in range(n):
-        e = index.edge[step.edge[i]]
-        if step.from_m[i] < e.exit_at <= step.to_m[i] or step.from_m[i] < e.entry_at <= step.to_m[i]:
-            return True
-        if i and (e.exit_at == step.from_m[i] or e.entry_at == step.from_m[i]) and step.from_m[i] == 0.0:
-            return True
-    return False
-
-
 @kernel
 def project_on_step(index: StreetIndex, lon: int, lat: int, from_m: float, step: Step, n: int) -> float:
     """Place a point on a step, not before `from_m`; metres along the step."""
@@ -144,13 +132,8 @@ def project_on_step(index: StreetIndex, lon: int, lat: int, from_m: float, step:
 
 
 @spliced
-def place_kept(st: Any, first: int, last: int, index: StreetIndex, step: Step, n: int) -> int:
-    """Place arrival and leave of the kept pings `first` to `last` along a step.
-
-    Returns
-    -------
-    m : int    points, two a kept ping; the leave of the last one is not placed
-    """
+def place_kept(st: Any, first: int, last: int, index: StreetIndex, step: Step, n: int) -> None:
+    """Place arrival and leave of the kept pings `first` to `last` along a step; not the leave of the last."""
     total = step.start_m[n - 1] + step.to_m[n - 1] - step.from_m[n - 1]
     at = 0.0
     for k in range(first, last + 1):
@@ -165,7 +148,6 @@ def place_kept(st: Any, first: int, last: int, index: StreetIndex, step: Step, n
             at = max(at, project_on_step(index, st.left_lon[k], st.left_lat[k], at, step, n))
         step.t_us[i + 1] = st.leave_us[k]
         step.at_m[i + 1] = at
-    return 2 * (last - first) + 1
 
 
 @kernel

@@ -15,7 +15,7 @@ from stream.network.routes import StreetIndex
 LONG_S = 6.5  # longer steps are not smooth motion
 STAND_MPS = 2.0  # slower at a step's end: it may have stood there
 # How likely the slack of a long step lies at a place: where the vehicle was seen to stand, where it came or
-# went slowly, at each mouth on the way.
+# went slowly, at each mouth on the way, at an end of the step between gates, and spread along the way.
 AT_STAY = 6.0
 AT_SLOW = 1.5
 AT_MOUTH = 1.0
