@@ -17,7 +17,7 @@ _ENDS = ("", "lower_", "upper_")
 def _open(session: Session) -> "Store":
     from stream.store import Store
 
-    return Store.open(session.store, read_only=True)
+    return Store.open(session.store, read_only=True, memory_mb=session.settings().run.memory_mb)
 
 
 def status(ctx: typer.Context) -> None:

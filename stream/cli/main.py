@@ -86,7 +86,9 @@ def _options(
         Path | None,
         typer.Option(metavar="FILE", help="YAML file of settings; turntally.yaml here, if there is one."),
     ] = None,
-    quiet: Annotated[bool, typer.Option("--quiet", help="No progress, no notes; errors only.")] = False,
+    quiet: Annotated[
+        bool, typer.Option("--quiet", help="No progress, no notes: results and errors only.")
+    ] = False,
     as_json: Annotated[bool, typer.Option("--json", help="Print the result as one JSON object.")] = False,
     version: Annotated[  # noqa: ARG001 - acts through its callback
         bool, typer.Option("--version", callback=_show_version, is_eager=True, help="Print the version.")

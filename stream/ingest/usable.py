@@ -18,6 +18,7 @@ from stream.store.batch import BatchTotals
 from stream.store.ledger import Delivery
 
 _SAMPLE_ROWS = 10_000
+_GPS_BEGINS_US = 315_964_800_000_000  # 1980-01-06T00:00:00Z, week 0 of GPS (IS-GPS-200)
 Floats = NDArray[np.float64]
 
 
@@ -46,7 +47,7 @@ class Sample:
 def check_usable(
     job: Job, delivery: Delivery, totals: BatchTotals, standing: Standing, sample: Sample
 ) -> None:
-    """Refuse a delivery that lies elsewhere, comes out of order, is in already, or gives nothing at all.
+    """Refuse a delivery that lies elsewhere, or in another time, out of order, in already, or gives nothing.
 
     Raises
     ------
@@ -55,6 +56,11 @@ def check_usable(
     """
     settings = job.settings
     where = ", ".join(str(f) for f in delivery.files[:3]) + (" ..." if len(delivery.files) > 3 else "")
+    if totals.last_ping_us is not None and totals.last_ping_us < _GPS_BEGINS_US:
+        raise InputError(
+            f"{where}: all its times lie before GPS began (the newest is {_utc(totals.last_ping_us)} UTC), "
+            f"so they aren't in {settings.source.time_unit}: mend source.time_unit (s, ms, us or ns)"
+        )
     if totals.dropped.get("late", 0) > LATE_SHARE * totals.rows_in:
         raise _late(job, where, totals, standing)
     if totals.rows_in and totals.rows_used == 0 and totals.rows_held <= 0:

@@ -65,7 +65,7 @@ def kept_tallies(store: Store) -> dict[str, KeptTally]:
 
 def _nearest(word: str, known: Sequence[str]) -> str:
     near = difflib.get_close_matches(word, known, 1, 0.4)
-    return f"did you mean {near[0]}?" if near else f"there are {', '.join(known)}"
+    return f"did you mean {near[0]}?" if near else f"there are {', '.join(k or repr(k) for k in known)}"
 
 
 def find_tally(store: Store, name: str) -> KeptTally:

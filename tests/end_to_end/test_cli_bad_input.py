@@ -8,7 +8,7 @@ from typing import Any
 import polars as pl
 import pytest
 
-from tests.command import done, done_json, refused
+from tests.command import done, done_json, refused, turntally
 from tests.drives import HEADS, Row, crossings, write_csv
 
 STORE = "turntally.duckdb"
@@ -58,6 +58,24 @@ def test_wrong_column_names_those_there_are(here: Path, refuse: Callable[..., st
     message = refuse("ingest", "pings.csv")
     for part in ("pings.csv", "vehicle_id", "unit", "source.columns.vehicle"):
         assert part in message
+
+
+def test_seconds_declared_as_milliseconds_are_refused(here: Path, refuse: Callable[..., str]) -> None:
+    """Times that a wrong unit puts before GPS began (1980-01-06, IS-GPS-200) are refused with the key."""
+    write_csv(here / "pings.csv", crossings(2))
+    (here / "turntally.yaml").write_text("source: {time_unit: ms}\n", encoding="utf-8")
+    message = refuse("ingest", "pings.csv")
+    for part in ("pings.csv", "before GPS began", "1970-01", "source.time_unit"):
+        assert part in message
+
+
+@pytest.mark.parametrize("command", ["status", "audit", "quantiles"])
+def test_unknown_key_is_refused_by_commands_that_only_look(here: Path, command: str) -> None:
+    """A configuration with a wrong key is refused whatever the command, with the nearest known key."""
+    (here / "bad.yaml").write_text("source: {colums: {}}\n", encoding="utf-8")
+    ran = turntally("--config", "bad.yaml", command, cwd=here)
+    assert ran.returncode == 2
+    assert "source.colums; did you mean columns?" in ran.stderr
 
 
 def test_time_unreadable_throughout_is_refused(here: Path, refuse: Callable[..., str]) -> None:
